@@ -1,0 +1,219 @@
+"""The limits a posture must keep, as plain functions of where the trunk is.
+
+One definition serves the solver (with slopes and curvature), the check of a posture that was
+found, and the choice among centre-of-mass samples.
+"""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+from math import cos, sin
+
+import numpy as np
+from numpy.typing import NDArray
+
+from climbpath.posture.batch import StanceBatch
+from climbpath.posture.linkage import LIMB_SIDE, TRUNK_TILT, TRUNK_TURN, Linkage
+
+Array = NDArray[np.float64]
+
+SOFT = 0.01
+"""Rounding of the horizontal distance hip to toe near zero, m: keeps its slope finite there."""
+
+
+@dataclass(frozen=True)
+class LimbGeometry:
+    """Root to contact of all limbs in trunk axes.
+
+    ``point`` (3, 4, N): contact seen from the trunk's origin. ``along`` (3, 4, N): unit vector
+    root to contact. ``distance`` (4, N) [m]. ``rise`` (4, N) [m]: how far the shoulder has
+    lifted. ``rising`` (4, N) bool: the shoulder is between rest and full lift.
+    """
+
+    point: Array
+    along: Array
+    distance: Array
+    rise: Array
+    rising: NDArray[np.bool_]
+
+
+def limb_geometry(linkage: Linkage, batch: StanceBatch, turn: Array, shift: Array) -> LimbGeometry:
+    """Seen from a trunk at ``shift`` (3, N) [m], turned by ``turn`` (3, 3, N).
+
+    The shoulder lifts by up to ``shoulder_rise`` along the trunk to meet a hand above it: the
+    distance is that from the contact to the segment the joint can slide on, a convex function.
+    """
+    dx = [batch.target[i] - shift[i] for i in range(3)]
+    point = np.stack([dx[0] * turn[0, j] + dx[1] * turn[1, j] + dx[2] * turn[2, j] for j in range(3)])
+    away = point - linkage.roots.T[:, :, None]
+    rise = np.zeros_like(away[1])
+    rise[:2] = np.clip(away[1, :2], 0.0, linkage.shoulder_rise)
+    rising = np.zeros(rise.shape, dtype=bool)
+    rising[:2] = (away[1, :2] > 0.0) & (away[1, :2] < linkage.shoulder_rise)
+    away[1] -= rise
+    distance = np.maximum(np.sqrt(away[0] ** 2 + away[1] ** 2 + away[2] ** 2), 0.02)
+    return LimbGeometry(point, away / distance, distance, rise, rising)
+
+
+@dataclass(frozen=True)
+class LegLimits:
+    """Limits on where a toe may be seen from its hip, values (2, N) and slopes (3, 2, N).
+
+    ``lift``: the thigh at its full flexion still lets the lower leg come down to the toe,
+    |toe - knee| >= lower leg in the plane of hip, toe and trunk. ``high``: the line hip to toe
+    never stands above the fully flexed thigh. ``out`` and ``across``: the toe's distance to the
+    side, at most that of a straight leg at full abduction and adduction.
+    """
+
+    lift: Array
+    lift_slope: Array
+    high: Array
+    high_slope: Array
+    out: Array
+    across: Array
+    side: Array
+
+
+def leg_limits(linkage: Linkage, geometry: LimbGeometry) -> LegLimits:
+    """Evaluate the limits of both legs for N trunks."""
+    distance = geometry.distance[2:]
+    along = geometry.along[:, 2:]
+    x, y, z = along * distance
+    side = LIMB_SIDE[2:, None]
+    knee_across, knee_up = linkage.knee_limit
+    across = np.sqrt(x**2 + z**2 + SOFT**2)
+    gap = np.sqrt((across - knee_across) ** 2 + (y - knee_up) ** 2)
+    gap = np.maximum(gap, 1e-6)
+    lean = (across - knee_across) / gap / across
+    lift_slope = np.stack([lean * x, (y - knee_up) / gap, lean * z])
+    rise = knee_up / linkage.thigh
+    high_slope = rise * along
+    high_slope[1] -= 1.0
+    out, inward = linkage.lateral_limit
+    return LegLimits(
+        lift=gap - linkage.lower_leg[1],
+        lift_slope=lift_slope,
+        high=rise * distance - y,
+        high_slope=high_slope,
+        out=out - side * x,
+        across=inward + side * x,
+        side=np.broadcast_to(side, x.shape),
+    )
+
+
+TILT_LIMIT = cos(TRUNK_TILT)
+TURN_LIMIT = cos(TRUNK_TURN)
+
+
+@dataclass(frozen=True)
+class PointLimit:
+    """A limit linear in a trunk point: ``value`` (N,), ``normal`` (3, N) in trunk axes."""
+
+    value: Array
+    normal: Array
+    offset: Array
+    shifts: bool
+    spare: bool
+    active: NDArray[np.bool_] | None = None
+
+
+def point_limits(
+    linkage: Linkage, batch: StanceBatch, turn: Array, shift: Array, spare: Array
+) -> list[PointLimit]:
+    """Trunk clear of the surface, trunk tilt and turn, and feet on the floor."""
+    limits: list[PointLimit] = []
+    offsets = (np.zeros(3), np.array([0.0, linkage.chest_height, 0.0]))
+    spaces = (linkage.pelvis_space, linkage.chest_space)
+    for which, (offset, space) in enumerate(zip(offsets, spaces, strict=True)):
+        for slot in range(2):
+            plane = batch.plane[which, slot]
+            if slot and np.array_equal(plane, batch.plane[which, 0]):
+                continue
+            normal = _into_trunk(turn, plane[:3])
+            value = _dot(plane[:3], shift) + plane[3] + _dot(offset, normal) - space
+            limits.append(PointLimit(value, normal, offset, True, False))
+    up, out = np.array([0.0, 1.0, 0.0]), np.array([0.0, 0.0, 1.0])
+    limits.append(PointLimit(turn[1, 1] - TILT_LIMIT, turn[1], up, False, False))
+    limits.append(PointLimit(turn[2, 2] - TURN_LIMIT, turn[2], out, False, False))
+    for foot in (2, 3):
+        active = batch.floor[foot]
+        if not active.any():
+            continue
+        normal = _into_trunk(turn, batch.vertical)
+        root = linkage.roots[foot]
+        height = _dot(batch.vertical, shift) + _dot(root, normal) - batch.floor_level
+        limits.append(
+            PointLimit(linkage.floor_reach - spare - height, -normal, root, True, True, active)
+        )
+        limits.append(PointLimit(height - linkage.fold[foot], normal, root, True, False, active))
+    return limits
+
+
+def _into_trunk(turn: Array, vector: Array) -> Array:
+    """R^T n for N turns and vectors. Shapes (3, 3, N), (3, N) -> (3, N)."""
+    return np.stack(
+        [turn[0, j] * vector[0] + turn[1, j] * vector[1] + turn[2, j] * vector[2] for j in range(3)]
+    )
+
+
+def _dot(first: Array, second: Array) -> Array:
+    return np.asarray(first[0] * second[0] + first[1] * second[1] + first[2] * second[2])
+
+
+def slack(
+    linkage: Linkage, batch: StanceBatch, turn: Array, shift: Array
+) -> tuple[Array, Array]:
+    """Spare reach and the worst hard limit of N postures, both (N,) in metres.
+
+    The hard limits are folds, joint ranges and clearance; tilt and turn count in trunk lengths.
+    """
+    count = batch.size
+    geometry = limb_geometry(linkage, batch, turn, shift)
+    spare = np.where(batch.engaged, batch.reach - geometry.distance, np.inf).min(axis=0)
+    fold = geometry.distance - linkage.fold[:, None]
+    hard = np.where(batch.engaged, fold, np.inf).min(axis=0)
+    legs = leg_limits(linkage, geometry)
+    for value in (legs.lift, legs.high, legs.out, legs.across):
+        hard = np.minimum(hard, np.where(batch.engaged[2:], value, np.inf).min(axis=0))
+    zero = np.zeros(count)
+    for limit in point_limits(linkage, batch, turn, shift, zero):
+        value = limit.value if limit.active is None else np.where(limit.active, limit.value, np.inf)
+        if limit.spare:
+            spare = np.minimum(spare, value)
+        else:
+            hard = np.minimum(hard, value if limit.shifts else value * linkage.trunk)
+    return spare, hard
+
+
+def upright(count: int) -> Array:
+    """N trunks parallel to the surface. Shape (3, 3, N)."""
+    return np.repeat(np.eye(3)[:, :, None], count, axis=2)
+
+
+def turned(turn: Array, step: Array) -> Array:
+    """R exp(w) for N turns (3, 3, N) and steps w (3, N) (Rodrigues' formula)."""
+    angle_squared = step[0] ** 2 + step[1] ** 2 + step[2] ** 2
+    angle = np.sqrt(np.maximum(angle_squared, 1e-16))
+    first = np.sin(angle) / angle
+    second = (1.0 - np.cos(angle)) / angle**2
+    x, y, z = step
+    spin = np.empty_like(turn)
+    for i in range(3):
+        for j in range(3):
+            spin[i, j] = second * step[i] * step[j]
+        spin[i, i] += 1.0 - second * angle_squared
+    spin[0, 1] -= first * z
+    spin[1, 0] += first * z
+    spin[0, 2] += first * y
+    spin[2, 0] -= first * y
+    spin[1, 2] -= first * x
+    spin[2, 1] += first * x
+    return np.stack(
+        [np.stack([turn[i, 0] * spin[0, j] + turn[i, 1] * spin[1, j] + turn[i, 2] * spin[2, j]
+                   for j in range(3)]) for i in range(3)]
+    )
+
+
+def tilted(angle: float) -> Array:
+    """Trunk leaning to the right by ``angle`` [rad] in the surface's plane. Shape (3, 3)."""
+    return np.array([[cos(angle), sin(angle), 0.0], [-sin(angle), cos(angle), 0.0], [0.0, 0.0, 1.0]])

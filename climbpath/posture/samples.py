@@ -1,0 +1,330 @@
+"""Where the centre of mass can be in a stance: a few samples that span what it allows.
+
+Sample heights are the levels of one lattice of world heights, so that samples of different
+stances meet. At each level the sample is the posture whose centre of mass is nearest the line.
+
+With the trunk's turn and its distance off the wall given, each engaged limb leaves the trunk's x
+an interval (the chord of its reach at that height); the line clipped to their intersection is the
+nearest point. A few turns and distances are tried, the best is assembled exactly, and two
+corrections bring its centre of mass onto the level.
+"""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+
+import numpy as np
+from numpy.typing import NDArray
+
+from climbpath.posture.assembly import FIRST_JOINT, assemble, rest_points
+from climbpath.posture.batch import StanceBatch
+from climbpath.posture.com import com_of, joint_weights
+from climbpath.posture.limits import slack, tilted, upright
+from climbpath.posture.linkage import Linkage
+from climbpath.posture.solver import Postures
+from climbpath.contacts import Limb
+
+Array = NDArray[np.float64]
+Ints = NDArray[np.int64]
+
+CHUNK = 4096
+LEAN = 0.45
+"""Sideways lean of the trunk tried besides upright and the solver's own, rad."""
+
+OUT = 0.15
+"""Extra distance off the wall tried where folded legs need the room, m."""
+
+TRIES = 3
+"""How many of the candidate trunks are assembled before a level is given up."""
+
+CORRECTIONS = 2
+HEIGHT_TOLERANCE = 0.004
+"""A sample's centre of mass stands within this of its level, m."""
+
+REACH_TOLERANCE = 1e-4
+"""Rounding allowed on reach and hard limits of a sample, m."""
+
+MOVES_WITH_END = (0.0, 0.5, 0.8, 1.0)
+"""How much of an end's movement the four joints of a limb make, roughly: used for first guesses."""
+
+
+@dataclass(frozen=True)
+class Samples:
+    """P samples of N stances, sorted by stance and level, in base axes of their stance.
+
+    ``stance`` (P,) and ``level`` (P,): which stance, which lattice level. ``turn`` (3, 3, P),
+    ``shift`` (3, P) [m]: the trunk. ``com`` (3, P) [m]: centre of mass. ``spare`` (P,) [m]: reach
+    to spare in this very posture (at most the stance's margin).
+    """
+
+    stance: Ints
+    level: Ints
+    turn: Array
+    shift: Array
+    com: Array
+    spare: Array
+
+
+@dataclass(frozen=True)
+class Lattice:
+    """Levels of world height: level k stands at ``anchor`` + k ``step``. [m]"""
+
+    anchor: float
+    step: float
+
+    def height(self, level: Ints) -> Array:
+        """World height of levels [m]."""
+        return np.asarray(self.anchor + self.step * level)
+
+    def halved(self) -> Lattice:
+        """The lattice with half the step: contains all levels of this one."""
+        return Lattice(self.anchor, self.step / 2.0)
+
+
+def com_samples(
+    linkage: Linkage, batch: StanceBatch, postures: Postures, line_x: float, lattice: Lattice
+) -> Samples:
+    """Samples of N possible stances (margin 0 or more).
+
+    A stance so tight that no level falls into its range has one sample, the solver's own posture,
+    under the nearest level.
+    """
+    parts = []
+    for begin in range(0, batch.size, CHUNK):
+        part = slice(begin, min(begin + CHUNK, batch.size))
+        inside = Postures(postures.margin[part], postures.turn[..., part], postures.shift[:, part])
+        found = _chunk(linkage, batch.take(part), inside, line_x, lattice)
+        parts.append((found, begin))
+    return Samples(
+        np.concatenate([p.stance + b for p, b in parts]) if parts else np.zeros(0, np.int64),
+        np.concatenate([p.level for p, _ in parts]) if parts else np.zeros(0, np.int64),
+        *(np.concatenate([getattr(p, name) for p, _ in parts], axis=-1)
+          if parts else np.zeros((*lead, 0))
+          for name, lead in (("turn", (3, 3)), ("shift", (3,)), ("com", (3,)), ("spare", ()))),
+    )
+
+
+@dataclass(frozen=True)
+class _Guess:
+    """com = share * trunk + turn @ lever + fixed, roughly: (N,), (3, N), (3, N)."""
+
+    share: Array
+    lever: Array
+    fixed: Array
+
+
+def _guess(linkage: Linkage, batch: StanceBatch, weights: Array) -> _Guess:
+    count = batch.size
+    share = np.ones(count)
+    trunk = weights[1] * linkage.trunk + weights[2] * (linkage.trunk + 0.75 * linkage.head)
+    lever = np.zeros((3, count))
+    lever[1] = trunk
+    fixed = np.zeros((3, count))
+    for limb in Limb:
+        own = weights[FIRST_JOINT[limb]: FIRST_JOINT[limb] + 4]
+        with_end = float(own @ MOVES_WITH_END)
+        engaged = batch.engaged[limb]
+        root, rest = linkage.roots[limb], rest_points(linkage, limb)
+        lever += (root * (own.sum() - with_end))[:, None]
+        lever += np.where(engaged, 0.0, (rest * with_end)[:, None])
+        share = share - np.where(engaged, with_end, 0.0)
+        fixed += np.where(engaged, with_end * batch.target[:, limb], 0.0)
+    return _Guess(share, lever, fixed)
+
+
+def _levels(
+    linkage: Linkage, batch: StanceBatch, postures: Postures, guess: _Guess, lattice: Lattice
+) -> tuple[Ints, Ints]:
+    """Stance and level of every lattice level a stance might reach."""
+    low = np.full(batch.size, -np.inf)
+    high = np.full(batch.size, np.inf)
+    turn = postures.turn
+    for limb in Limb:
+        engaged = batch.engaged[limb]
+        root = np.einsum("jn,j->n", turn[1], linkage.roots[limb])
+        centre = batch.target[1, limb] - root
+        reach = batch.reach[limb]
+        rise = linkage.shoulder_rise if limb <= Limb.RH else 0.0
+        low = np.where(engaged, np.maximum(low, centre - reach - rise), low)
+        high = np.where(engaged, np.minimum(high, centre + reach), high)
+    low = np.maximum(low, postures.shift[1] - 0.9)
+    high = np.minimum(high, postures.shift[1] + 0.9)
+    out = postures.shift[2]
+    lever = np.einsum("ijn,jn->in", turn, guess.lever)
+    base = np.einsum("in,in->n", batch.vertical, lever + guess.fixed)
+    base += guess.share * batch.vertical[2] * out + batch.origin[1]
+    slope = guess.share * batch.vertical[1]
+    first = np.ceil((base + slope * low - lattice.anchor) / lattice.step).astype(np.int64)
+    last = np.floor((base + slope * high - lattice.anchor) / lattice.step).astype(np.int64)
+    number = np.maximum(last - first + 1, 0)
+    stance = np.repeat(np.arange(batch.size), number)
+    begin = np.repeat(np.cumsum(number) - number, number)
+    level = np.repeat(first, number) + np.arange(len(stance)) - begin
+    return stance, level
+
+
+def _chunk(
+    linkage: Linkage, batch: StanceBatch, postures: Postures, line_x: float, lattice: Lattice
+) -> Samples:
+    weights = joint_weights(linkage)
+    guess = _guess(linkage, batch, weights)
+    stance, level = _levels(linkage, batch, postures, guess, lattice)
+    wide = batch.take(stance)
+    goal = lattice.height(level) - wide.origin[1]
+    spread = _Guess(guess.share[stance], guess.lever[:, stance], guess.fixed[:, stance])
+    candidates = _candidates(linkage, postures, stance)
+    misses = np.stack([
+        _place(linkage, wide, spread, turn, out, extra, line_x, goal, None)[1]
+        for turn, out, extra in candidates
+    ])
+    # Earlier candidates win ties, and small gains are not worth an odd posture.
+    misses += 0.002 * np.arange(len(candidates))[:, None]
+    kept: list[tuple[Ints, Array, Array, Array, Array]] = []
+    open_ = np.arange(len(stance))
+    for _ in range(TRIES):
+        open_ = open_[np.isfinite(misses[:, open_]).any(axis=0)]
+        if not len(open_):
+            break
+        choice = np.argmin(misses[:, open_], axis=0)
+        misses[choice, open_] = np.inf
+        turn = np.stack([candidates[c][0][..., open_] for c in range(len(candidates))])
+        turn = np.moveaxis(turn, 0, -1)[..., np.arange(len(open_)), choice]
+        out = np.stack([candidates[c][1][open_] for c in range(len(candidates))])
+        extra = np.array([c[2] for c in candidates])[choice]
+        out = out[choice, np.arange(len(open_))]
+        good, shift, com, spare = _assembled(
+            linkage, wide.take(open_), weights, spread, open_, turn, out, extra, line_x, goal[open_]
+        )
+        kept.append((open_[good], turn[..., good], shift[:, good], com[:, good], spare[good]))
+        open_ = open_[~good]
+    return _gather(linkage, batch, postures, weights, lattice, stance, level, kept)
+
+
+Candidate = tuple[Array, Array, float]
+
+
+def _candidates(linkage: Linkage, postures: Postures, stance: Ints) -> list[Candidate]:
+    """Trunk turns with the distance off the wall: given, or (NaN) as near as clearance lets."""
+    own = postures.turn[..., stance]
+    count = len(stance)
+    near = np.full(count, np.nan)
+    leans = [np.repeat(tilted(angle)[:, :, None], count, axis=2) for angle in (LEAN, -LEAN)]
+    return [
+        (own, postures.shift[2, stance], 0.0),
+        (own, near, 0.0),
+        (upright(count), near, 0.0),
+        (upright(count), near, OUT),
+        (leans[0], near, 0.0),
+        (leans[1], near, 0.0),
+    ]
+
+
+def _place(
+    linkage: Linkage, batch: StanceBatch, guess: _Guess, turn: Array, out: Array,
+    extra: Array | float, line_x: float, goal: Array, error: Array | None,
+) -> tuple[Array, Array]:
+    """Trunk place (3, P) whose centre of mass is at height ``goal``, nearest the line.
+
+    ``error`` (3, P): what the guess of the centre of mass is known to be off by. Returns the
+    place and how far from the line it leaves the centre of mass (inf where no place is left).
+    """
+    lever = np.einsum("ijn,jn->in", turn, guess.lever)
+    fixed = lever + guess.fixed
+    if error is not None:
+        fixed = fixed + error
+    share = guess.share
+    z = np.where(np.isnan(out), linkage.pelvis_space, out)
+    for _ in range(2):
+        y = goal - (batch.vertical * fixed).sum(axis=0) - share * batch.vertical[2] * z
+        y = y / (share * batch.vertical[1])
+        z = np.where(np.isnan(out), _nearest_out(linkage, batch, turn, y) + extra, out)
+    low, high = np.full(len(y), -np.inf), np.full(len(y), np.inf)
+    centres, holes = [], []
+    for limb in Limb:
+        root = np.einsum("ijn,j->in", turn, linkage.roots[limb])
+        centre = batch.target[:, limb] - root
+        dy, dz = centre[1] - y, centre[2] - z
+        if limb <= Limb.RH:
+            rise = np.clip(dy / np.maximum(turn[1, 1], 0.3), 0.0, linkage.shoulder_rise)
+            centre = centre - rise * turn[:, 1]
+            dy, dz = centre[1] - y, centre[2] - z
+        off = dy**2 + dz**2
+        chord = batch.reach[limb] ** 2 - off
+        half = np.sqrt(np.maximum(chord, 0.0))
+        engaged = batch.engaged[limb]
+        low = np.where(engaged, np.maximum(low, centre[0] - half), low)
+        high = np.where(engaged, np.minimum(high, centre[0] + half), high)
+        high = np.where(engaged & (chord < 0.0), -np.inf, high)
+        centres.append(centre[0])
+        hole = np.sqrt(np.maximum(linkage.fold[limb] ** 2 - off, 0.0))
+        holes.append(np.where(engaged, hole, 0.0))
+    wanted = (line_x - fixed[0]) / share
+    x = np.minimum(np.maximum(wanted, low), high)
+    for centre_x, hole in zip(centres, holes, strict=True):
+        # A limb cannot fold to less than its shortest length: step out of that gap, to the
+        # nearer side that reach allows.
+        inside = np.abs(x - centre_x) < hole
+        left, right = centre_x - hole, centre_x + hole
+        to_left = (left >= low) & ((x - left <= right - x) | (right > high))
+        x = np.where(inside, np.where(to_left, left, np.where(right <= high, right, x)), x)
+    miss = np.where(low <= high, np.abs(share * (x - wanted)), np.inf)
+    return np.stack([np.where(np.isfinite(x), x, 0.0), y, z]), miss
+
+
+def _nearest_out(linkage: Linkage, batch: StanceBatch, turn: Array, y: Array) -> Array:
+    """Least distance off the wall, along the base normal, that trunk clearance allows. [m]"""
+    z = np.full(len(y), -np.inf)
+    for which, (height, space) in enumerate(
+        ((0.0, linkage.pelvis_space), (linkage.chest_height, linkage.chest_space))
+    ):
+        for slot in range(2):
+            n, offset = batch.plane[which, slot, :3], batch.plane[which, slot, 3]
+            point = turn[:, 1] * height
+            value = offset + (n * point).sum(axis=0) + n[1] * y
+            z = np.maximum(z, (space - value) / np.maximum(n[2], 0.2))
+    return z + 1e-6
+
+
+def _assembled(
+    linkage: Linkage, batch: StanceBatch, weights: Array, guess: _Guess, index: Ints, turn: Array,
+    out: Array, extra: Array, line_x: float, goal: Array,
+) -> tuple[NDArray[np.bool_], Array, Array, Array]:
+    """Assemble, correct the height, and check all limits: good, shift, com, spare."""
+    own = _Guess(guess.share[index], guess.lever[:, index], guess.fixed[:, index])
+    lever = np.einsum("ijn,jn->in", turn, own.lever)
+    error: Array | None = None
+    shift = com = np.zeros((3, len(index)))
+    for _ in range(CORRECTIONS + 1):
+        shift, _miss = _place(linkage, batch, own, turn, out, extra, line_x, goal, error)
+        com = com_of(weights, assemble(linkage, batch, turn, shift))
+        error = com - own.share * shift - lever - own.fixed
+    spare, hard = slack(linkage, batch, turn, shift)
+    height = (batch.vertical * com).sum(axis=0)
+    good = (spare >= -REACH_TOLERANCE) & (hard >= -REACH_TOLERANCE)
+    good &= np.abs(height - goal) <= HEIGHT_TOLERANCE
+    return good, shift, com, np.maximum(spare, 0.0)
+
+
+def _gather(
+    linkage: Linkage, batch: StanceBatch, postures: Postures, weights: Array, lattice: Lattice,
+    stance: Ints, level: Ints, kept: list[tuple[Ints, Array, Array, Array, Array]],
+) -> Samples:
+    """Join the rounds, add the solver's own posture where a stance has nothing, and sort."""
+    has = np.zeros(batch.size, dtype=bool)
+    for index, *_ in kept:
+        has[stance[index]] = True
+    bare = np.flatnonzero(~has)
+    tight = batch.take(bare)
+    turn, shift = postures.turn[..., bare], postures.shift[:, bare]
+    com = com_of(weights, assemble(linkage, tight, turn, shift))
+    height = (tight.vertical * com).sum(axis=0) + tight.origin[1]
+    nearest = np.rint((height - lattice.anchor) / lattice.step).astype(np.int64)
+    stances = np.concatenate([*(stance[k[0]] for k in kept), bare])
+    levels = np.concatenate([*(level[k[0]] for k in kept), nearest])
+    order = np.lexsort((levels, stances))
+    turns = np.concatenate([*(k[1] for k in kept), turn], axis=-1)
+    shifts = np.concatenate([*(k[2] for k in kept), shift], axis=-1)
+    coms = np.concatenate([*(k[3] for k in kept), com], axis=-1)
+    spares = np.concatenate([*(k[4] for k in kept), np.maximum(postures.margin[bare], 0.0)])
+    return Samples(stances[order], levels[order], turns[..., order], shifts[:, order],
+                   coms[:, order], spares[order])

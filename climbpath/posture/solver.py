@@ -1,0 +1,310 @@
+"""The margin of all stances at once: a primal-dual interior-point method on arrays.
+
+For each stance it finds the trunk's place and turn with the largest spare reach t, subject to
+|root_i - contact_i| <= reach_i - t for every engaged limb and to the hard limits of
+``posture.limits``. Newton's equations carry the full curvature, so a dozen steps are enough.
+
+References: S. Wright, Primal-Dual Interior-Point Methods, SIAM 1997, chapter 1 (the method).
+"""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+
+import numpy as np
+from numpy.typing import NDArray
+
+from climbpath.posture.barrier import System
+from climbpath.posture.batch import StanceBatch
+from climbpath.posture.limits import (
+    LegLimits,
+    LimbGeometry,
+    PointLimit,
+    leg_limits,
+    limb_geometry,
+    point_limits,
+    slack,
+    turned,
+    upright,
+)
+from climbpath.posture.linkage import Linkage
+
+Array = NDArray[np.float64]
+
+CHUNK = 4096
+"""Stances solved together: arrays of this length stay in the processor's cache."""
+
+STEPS = (14, 26, 30)
+"""Newton steps from the first, second and third start."""
+
+DAMPING = (0.1, 0.01)
+DAMPING_PER_TARGET = (1000.0, 100.0)
+"""Added to the curvature over turn and shift, constant and per unit of the barrier's weight:
+heavy while far from the optimum, where the turn's curvature is often negative."""
+
+HARD_TOLERANCE = 1e-4
+"""How far a hard limit may be missed by rounding of the iteration, m."""
+
+RETRY_BELOW = (0.08, 0.03)
+"""Stances whose margin so far is under this (m) are solved from the next start too: a fold or a
+joint range can hold a start in a local optimum, and near zero that decides."""
+
+CONVERGED = 1e-5
+"""Barrier weight under which an iteration counts as finished."""
+
+
+@dataclass(frozen=True)
+class Postures:
+    """The trunk of N stances with the largest spare reach, in base axes.
+
+    ``margin`` (N,) [m]: spare reach; where a hard limit cannot be kept, minus what it misses.
+    ``turn`` (3, 3, N), ``shift`` (3, N) [m].
+    """
+
+    margin: Array
+    turn: Array
+    shift: Array
+
+
+def solve_postures(linkage: Linkage, batch: StanceBatch) -> Postures:
+    """Largest spare reach of N stances. Every stance has at least one engaged or floor limb."""
+    count = batch.size
+    margin = np.empty(count)
+    turn = np.empty((3, 3, count))
+    shift = np.empty((3, count))
+    for begin in range(0, count, CHUNK):
+        part = slice(begin, min(begin + CHUNK, count))
+        found = _solve_chunk(linkage, batch.take(part))
+        margin[part], turn[..., part], shift[..., part] = found.margin, found.turn, found.shift
+    return Postures(margin, turn, shift)
+
+
+def _solve_chunk(linkage: Linkage, batch: StanceBatch) -> Postures:
+    best, finished = _descend(linkage, batch, *_start(linkage, batch, 0), STEPS[0])
+    for attempt, below in enumerate(RETRY_BELOW, start=1):
+        doubtful = np.flatnonzero((best.margin < below) | ~finished)
+        if not len(doubtful):
+            break
+        again = batch.take(doubtful)
+        start = _start(linkage, again, attempt)
+        found, done = _descend(linkage, again, *start, STEPS[attempt])
+        finished[doubtful] |= done
+        better = found.margin > best.margin[doubtful]
+        where = doubtful[better]
+        best.margin[where] = found.margin[better]
+        best.turn[..., where] = found.turn[..., better]
+        best.shift[..., where] = found.shift[..., better]
+    return best
+
+
+def _start(linkage: Linkage, batch: StanceBatch, attempt: int) -> tuple[Array, Array]:
+    """A trunk between the contacts: upright, and on later attempts lower and farther out."""
+    count = batch.size
+    engaged = batch.engaged.astype(float)
+    hang = linkage.trunk + 0.6 * linkage.reach[0]
+    stand = 0.75 * linkage.reach[2]
+    offset = np.array([-hang, -hang, stand, stand])[:, None]
+    total = np.maximum(engaged.sum(axis=0), 1.0)
+    shift = np.empty((3, count))
+    shift[0] = (batch.target[0] * engaged).sum(axis=0) / total
+    shift[1] = ((batch.target[1] + offset) * engaged).sum(axis=0) / total
+    out = (batch.target[2] * engaged).sum(axis=0) / total
+    shift[2] = np.maximum(out, 0.0) + linkage.pelvis_space + (0.08, 0.30, 0.05)[attempt]
+    on_floor = batch.floor.any(axis=0)
+    level = batch.floor_level + 0.9 * linkage.floor_reach
+    stood = (level - batch.vertical[2] * shift[2]) / batch.vertical[1]
+    shift[1] = np.where(on_floor, stood, shift[1])
+    turn = upright(count)
+    if attempt == 2:
+        # Lean the shoulders toward the middle of the hands, hips toward that of the feet.
+        hands = _mean_x(batch, slice(0, 2), shift[0])
+        feet = _mean_x(batch, slice(2, 4), shift[0])
+        angle = np.clip(np.arctan2(hands - feet, 1.6 * linkage.trunk), -0.7, 0.7)
+        turn[0, 0], turn[0, 1], turn[1, 0] = np.cos(angle), np.sin(angle), -np.sin(angle)
+        turn[1, 1] = np.cos(angle)
+        shift[1] -= 0.15
+    return turn, shift
+
+
+def _mean_x(batch: StanceBatch, limbs: slice, otherwise: Array) -> Array:
+    engaged = batch.engaged[limbs].astype(float)
+    total = engaged.sum(axis=0)
+    mean = (batch.target[0, limbs] * engaged).sum(axis=0) / np.maximum(total, 1.0)
+    return np.where(total > 0, mean, otherwise)
+
+
+@dataclass(frozen=True)
+class _State:
+    """Where a chunk stands: geometry and every limit, evaluated once a step.
+
+    ``value`` and ``active`` list the limits in groups: reach, fold, the four of the legs (each
+    (4, N) or (2, N)), then those of trunk points and floor feet ((N,) each).
+    """
+
+    geometry: LimbGeometry
+    legs: LegLimits
+    points: list[PointLimit]
+    value: list[Array]
+    active: list[NDArray[np.bool_]]
+
+
+def _evaluate(
+    linkage: Linkage, batch: StanceBatch, turn: Array, shift: Array, spare: Array
+) -> _State:
+    geometry = limb_geometry(linkage, batch, turn, shift)
+    legs = leg_limits(linkage, geometry)
+    points = point_limits(linkage, batch, turn, shift, spare)
+    everywhere = np.ones(batch.size, dtype=bool)
+    feet = batch.engaged[2:]
+    value = [
+        batch.reach - spare - geometry.distance,
+        geometry.distance - linkage.fold[:, None],
+        legs.lift, legs.high, legs.out, legs.across,
+        *(limit.value for limit in points),
+    ]
+    active = [batch.engaged, batch.engaged, feet, feet, feet, feet]
+    active += [everywhere if limit.active is None else limit.active for limit in points]
+    return _State(geometry, legs, points, value, active)
+
+
+def _descend(
+    linkage: Linkage, batch: StanceBatch, turn: Array, shift: Array, steps: int
+) -> tuple[Postures, NDArray[np.bool_]]:
+    """Interior-point steps from one start for all stances of a chunk, and which of them ended."""
+    spare = slack(linkage, batch, turn, shift)[0] - 0.05
+    target = np.full(batch.size, 0.02)
+    slacks: list[Array] = []
+    multipliers: list[Array] = []
+    for _ in range(steps):
+        state = _evaluate(linkage, batch, turn, shift, spare)
+        if not slacks:
+            slacks = [np.maximum(value, 0.03) for value in state.value]
+            multipliers = [np.where(active, 0.02 / s, 0.0)
+                           for s, active in zip(slacks, state.active, strict=True)]
+        else:
+            # A limit that holds takes its own value as slack, so that only limits still missed
+            # are approached from outside.
+            slacks = [np.where(value > 0.0, np.maximum(value, 0.1 * s), s)
+                      for s, value in zip(slacks, state.value, strict=True)]
+        step = _newton(batch, state, slacks, multipliers, target)
+        length, dual, target = _advance(state, step, slacks, multipliers, target)
+        turn = turned(turn, step[:3] * length)
+        move = step[3:6] * length
+        shift = shift + np.stack(
+            [turn[i, 0] * move[0] + turn[i, 1] * move[1] + turn[i, 2] * move[2] for i in range(3)]
+        )
+        spare = spare + length * step[6]
+    reached, hard = slack(linkage, batch, turn, shift)
+    margin = np.where(hard >= -HARD_TOLERANCE, reached, np.minimum(reached, hard))
+    return Postures(margin, turn, shift), target < CONVERGED
+
+
+def _advance(
+    state: _State, step: Array, slacks: list[Array], multipliers: list[Array], target: Array
+) -> tuple[Array, Array, Array]:
+    """Move slacks and multipliers in place; return both step lengths and the next target."""
+    length = np.minimum(1.0, 0.4 / np.maximum(_norm(step[:3]), 1e-12))
+    length = np.minimum(length, 0.4 / np.maximum(_norm(step[3:6]), 1e-12))
+    dual = np.ones_like(length)
+    slack_steps, multiplier_steps = [], []
+    changes = _linear_change(state, step)
+    for value, active, s, m, change in zip(
+        state.value, state.active, slacks, multipliers, changes, strict=True
+    ):
+        ds = change + value - s
+        dm = np.where(active, (target - m * ds) / s - m, 0.0)
+        length = np.minimum(length, _to_boundary(s, ds, active))
+        dual = np.minimum(dual, _to_boundary(m, dm, active))
+        slack_steps.append(ds)
+        multiplier_steps.append(dm)
+    total, number = np.zeros_like(length), np.zeros_like(length)
+    for k, active in enumerate(state.active):
+        moved = np.maximum(slacks[k] + length * slack_steps[k], 1e-10)
+        slacks[k] = np.where(active, moved, 1.0)
+        multipliers[k] = np.where(active, multipliers[k] + dual * multiplier_steps[k], 0.0)
+        total += _sum(slacks[k] * multipliers[k])
+        number += _sum(active.astype(float))
+    centring = np.where(np.minimum(length, dual) > 0.7, 0.12, 0.4)
+    return length, dual, np.maximum(centring * total / number, 1e-9)
+
+
+def _norm(vector: Array) -> Array:
+    return np.asarray(np.sqrt((vector**2).sum(axis=0)))
+
+
+def _sum(values: Array) -> Array:
+    return values if values.ndim == 1 else np.asarray(values.sum(axis=0))
+
+
+def _to_boundary(value: Array, change: Array, active: NDArray[np.bool_]) -> Array:
+    """Longest step that keeps ``value`` positive, with a little to spare."""
+    shrinks = active & (change < 0.0)
+    ratio = np.where(shrinks, 0.99 * value / np.where(shrinks, -change, 1.0), 1.0)
+    return ratio if ratio.ndim == 1 else np.asarray(ratio.min(axis=0))
+
+
+_UPPER = ((0, 0), (0, 1), (0, 2), (1, 1), (1, 2), (2, 2))
+
+
+def _newton(
+    batch: StanceBatch, state: _State, slacks: list[Array], multipliers: list[Array], target: Array
+) -> Array:
+    """One Newton step (7, N): turn, shift, spare reach."""
+    system = System(
+        batch.size,
+        (DAMPING[0] + DAMPING_PER_TARGET[0] * target, DAMPING[1] + DAMPING_PER_TARGET[1] * target),
+    )
+    weights, rights = [], []
+    for value, active, s, m in zip(state.value, state.active, slacks, multipliers, strict=True):
+        weight = np.where(active, m / s, 0.0)
+        weights.append(weight)
+        rights.append(np.where(active, m + target / s - weight * value, 0.0))
+    u = state.geometry.along
+    # Reach limits have slope -u, folds +u; both bend like the distance, (1 - u u^T) / d.
+    bend = (multipliers[0] - multipliers[1]) / state.geometry.distance
+    along = weights[0] + weights[1] - bend
+    inner = [along * u[i] * u[j] + (bend if i == j else 0.0) for i, j in _UPPER]
+    # While the shoulder lifts with the hand, distance does not change along the trunk.
+    inner[3] = np.where(state.geometry.rising, inner[3] - bend, inner[3])
+    pull = (rights[1] - rights[0]) * u
+    curve = (multipliers[1] - multipliers[0]) * u
+    legs = state.legs
+    for k, slope in ((2, legs.lift_slope), (3, legs.high_slope)):
+        pull[:, 2:] += rights[k] * slope
+        curve[:, 2:] += multipliers[k] * slope
+        for slot, (i, j) in enumerate(_UPPER):
+            inner[slot][2:] += weights[k] * slope[i] * slope[j]
+    pull[0, 2:] += legs.side * (rights[5] - rights[4])
+    curve[0, 2:] += legs.side * (multipliers[5] - multipliers[4])
+    inner[0][2:] += weights[4] + weights[5]
+    system.add_limbs(state.geometry.point, inner, pull, curve, -weights[0] * u)
+    system.matrix[6][6] += weights[0].sum(axis=0) + 1e-9
+    system.right[6] += 1.0 - rights[0].sum(axis=0)
+    for k, limit in enumerate(state.points, start=6):
+        system.add_plane(limit.normal, limit.offset, weights[k], rights[k], multipliers[k],
+                         limit.shifts, limit.spare)
+    return np.stack(system.solve())
+
+
+def _linear_change(state: _State, step: Array) -> list[Array]:
+    """How every limit changes along ``step`` to first order, in the order of ``_State``."""
+    w, u, t = step[:3], step[3:6], step[6]
+    v = state.geometry.point
+    moved = np.stack([v[(i + 1) % 3] * w[(i + 2) % 3] - v[(i + 2) % 3] * w[(i + 1) % 3] - u[i]
+                      for i in range(3)])
+    distance = (state.geometry.along * moved).sum(axis=0)
+    legs = state.legs
+    feet = moved[:, 2:]
+    sideways = legs.side * feet[0]
+    changes = [-distance - t, distance, (legs.lift_slope * feet).sum(axis=0),
+               (legs.high_slope * feet).sum(axis=0), -sideways, sideways]
+    for limit in state.points:
+        n, o = limit.normal, limit.offset
+        arm = [w[1] * o[2] - w[2] * o[1], w[2] * o[0] - w[0] * o[2], w[0] * o[1] - w[1] * o[0]]
+        change = n[0] * arm[0] + n[1] * arm[1] + n[2] * arm[2]
+        if limit.shifts:
+            change = change + n[0] * u[0] + n[1] * u[1] + n[2] * u[2]
+        if limit.spare:
+            change = change - t
+        changes.append(change)
+    return changes
