@@ -55,49 +55,63 @@ def limb_geometry(linkage: Linkage, batch: StanceBatch, turn: Array, shift: Arra
     return LimbGeometry(point, away / distance, distance, rise, rising)
 
 
-@dataclass(frozen=True)
-class LegLimits:
-    """Limits on where a toe may be seen from its hip, values (2, N) and slopes (3, 2, N).
+UPPER = ((0, 0), (0, 1), (0, 2), (1, 1), (1, 2), (2, 2))
+"""Order of the entries of symmetric 3 by 3 matrices."""
 
-    ``lift``: the thigh at its full flexion still lets the lower leg come down to the toe,
-    |toe - knee| >= lower leg in the plane of hip, toe and trunk. ``high``: the line hip to toe
-    never stands above the fully flexed thigh. ``out`` and ``across``: the toe's distance to the
-    side, at most that of a straight leg at full abduction and adduction.
+HEIGHT_SIDE = np.array([1.0, 1.0, -1.0, -1.0])
+"""Hands stay above the hips, feet below."""
+
+
+@dataclass(frozen=True)
+class JointLimits:
+    """Joint ranges as limits on where contacts may be seen from the trunk.
+
+    ``height`` (4, N): a hand not below the hips (below them it can neither pull nor press), a toe
+    not above its hip (a straight leg lifts to about a right angle, from memory). ``across`` (4, N)
+    with slope (3, 4, N): the limb does not cross the body too far. ``lift`` (2, N) with slope
+    (3, 2, N): the thigh at full flexion still lets the lower leg come down to the toe,
+    |toe - knee| >= lower leg in the plane of hip, toe and trunk, and ``lift_curve`` (6, 2, N) its
+    second derivatives (xx, xy, xz, yy, yz, zz). ``out`` (2, N): the toe's distance
+    to the side, at most that of a straight leg at full abduction.
     """
 
+    height: Array
+    across: Array
+    across_slope: Array
     lift: Array
     lift_slope: Array
-    high: Array
-    high_slope: Array
+    lift_curve: list[Array]
     out: Array
-    across: Array
-    side: Array
 
 
-def leg_limits(linkage: Linkage, geometry: LimbGeometry) -> LegLimits:
-    """Evaluate the limits of both legs for N trunks."""
-    distance = geometry.distance[2:]
-    along = geometry.along[:, 2:]
-    x, y, z = along * distance
-    side = LIMB_SIDE[2:, None]
+def joint_limits(linkage: Linkage, geometry: LimbGeometry) -> JointLimits:
+    """Evaluate the joint ranges of N trunks."""
+    away = geometry.along * geometry.distance
+    side = LIMB_SIDE[:, None]
+    cross = linkage.across[:, None]
+    across_slope = cross * geometry.along
+    across_slope[0] += side
+    height = np.empty_like(geometry.distance)
+    height[:2] = geometry.point[1, :2]
+    height[2:] = -away[1, 2:]
+    x, y, z = away[:, 2:]
     knee_across, knee_up = linkage.knee_limit
-    across = np.sqrt(x**2 + z**2 + SOFT**2)
-    gap = np.sqrt((across - knee_across) ** 2 + (y - knee_up) ** 2)
-    gap = np.maximum(gap, 1e-6)
-    lean = (across - knee_across) / gap / across
-    lift_slope = np.stack([lean * x, (y - knee_up) / gap, lean * z])
-    rise = knee_up / linkage.thigh
-    high_slope = rise * along
-    high_slope[1] -= 1.0
-    out, inward = linkage.lateral_limit
-    return LegLimits(
+    level = np.sqrt(x**2 + z**2 + SOFT**2)
+    gap = np.maximum(np.sqrt((level - knee_across) ** 2 + (y - knee_up) ** 2), 1e-6)
+    before, above = (level - knee_across) / gap, (y - knee_up) / gap
+    # Second derivatives: along the circle about the knee, and around the trunk's axis.
+    along_circle = (-above * x / level, before, -above * z / level)
+    around = (-z / level, np.zeros_like(z), x / level)
+    curve = [along_circle[i] * along_circle[j] / gap + before * around[i] * around[j] / level
+             for i, j in UPPER]
+    return JointLimits(
+        height=height,
+        across=cross * geometry.distance + side * away[0],
+        across_slope=across_slope,
         lift=gap - linkage.lower_leg[1],
-        lift_slope=lift_slope,
-        high=rise * distance - y,
-        high_slope=high_slope,
-        out=out - side * x,
-        across=inward + side * x,
-        side=np.broadcast_to(side, x.shape),
+        lift_slope=np.stack([before * x / level, above, before * z / level]),
+        lift_curve=curve,
+        out=linkage.out_limit - side[2:] * x,
     )
 
 
@@ -172,9 +186,10 @@ def slack(
     spare = np.where(batch.engaged, batch.reach - geometry.distance, np.inf).min(axis=0)
     fold = geometry.distance - linkage.fold[:, None]
     hard = np.where(batch.engaged, fold, np.inf).min(axis=0)
-    legs = leg_limits(linkage, geometry)
-    for value in (legs.lift, legs.high, legs.out, legs.across):
-        hard = np.minimum(hard, np.where(batch.engaged[2:], value, np.inf).min(axis=0))
+    joints = joint_limits(linkage, geometry)
+    for value in (joints.height, joints.across, joints.lift, joints.out):
+        engaged = batch.engaged[-len(value):]
+        hard = np.minimum(hard, np.where(engaged, value, np.inf).min(axis=0))
     zero = np.zeros(count)
     for limit in point_limits(linkage, batch, turn, shift, zero):
         value = limit.value if limit.active is None else np.where(limit.active, limit.value, np.inf)

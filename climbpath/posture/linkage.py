@@ -7,7 +7,7 @@ shoulder line, z out of the back (away from the wall). The origin is the hip cen
 from __future__ import annotations
 
 from dataclasses import dataclass
-from math import cos, pi, sin, sqrt
+from math import asin, cos, pi, sin, sqrt
 
 import numpy as np
 from numpy.typing import NDArray
@@ -22,8 +22,13 @@ GRIP_SHARE = 0.5
 Half of the hand's length is about where the fingers begin to bend round an edge (common
 practice, no source)."""
 
-TRUNK_TILT = np.deg2rad(60.0)
-"""Largest angle between the trunk and the surface's upward direction (a choice of the model)."""
+TRUNK_TILT = np.deg2rad(40.0)
+"""Largest angle between the trunk and the surface's upward direction (a choice of the model: fast
+climbing is done upright)."""
+
+ARM_ACROSS = np.deg2rad(25.0)
+"""How far an arm may point across the body, past straight ahead (a choice of the model: crossed arms
+are rare in fast climbing)."""
 
 TRUNK_TURN = np.deg2rad(50.0)
 """Largest angle between the front of the trunk and the surface's inward normal (a choice of the
@@ -42,7 +47,9 @@ class Linkage:
 
     ``roots`` (4, 3): shoulder and hip joints in trunk axes. ``lower_leg`` is the range of the
     distance knee to toe that the ankle's range allows; ``reach`` (4,) the longest distance from
-    root to contact of a gripping hand and of a toe; ``fold`` (4,) the shortest.
+    root to contact of a gripping hand and of a toe; ``fold`` (4,) the shortest. ``knee_limit``:
+    the knee before and above the hip at full flexion; ``out_limit``: how far a toe may stand to
+    the side of its hip; ``across`` (4,): sine of the angle a limb may cross the body by.
     """
 
     roots: Array
@@ -59,7 +66,8 @@ class Linkage:
     reach: Array
     fold: Array
     knee_limit: Array
-    lateral_limit: Array
+    out_limit: float
+    across: Array
     head: float
     chest_height: float
     pelvis_space: float
@@ -93,17 +101,18 @@ def _side(first: float, second: float, angle: float) -> float:
 def linkage_of(athlete: Athlete) -> Linkage:
     """The linkage of an athlete.
 
-    The ankle is taken as a hinge: at rest the foot stands at a right angle to the shank, and
-    between full dorsiflexion and full plantarflexion the distance knee to toe runs from
+    The ankle is taken as a hinge: at rest the sole stands at a right angle to the shank, so that
+    the line ankle to toe, which slants down to the sole, opens a little more; between full dorsiflexion and full plantarflexion the distance knee to toe runs from
     ``lower_leg[0]`` over ``lower_leg[1]`` (at rest) to ``lower_leg[2]`` (law of cosines). The
     fold of a limb is its length at the joint's full flexion, likewise.
     """
     length, limit = athlete.length, athlete.ranges
     toe, shank, thigh = length("ankle_to_toe"), length("shank"), length("thigh")
+    rest = pi / 2 + asin(min(length("ankle_height") / toe, 1.0))
     lower_leg = (
-        _side(shank, toe, pi / 2 - limit["ankle_dorsiflexion"]),
-        _side(shank, toe, pi / 2),
-        _side(shank, toe, pi / 2 + limit["ankle_plantarflexion"]),
+        _side(shank, toe, rest - limit["ankle_dorsiflexion"]),
+        _side(shank, toe, rest),
+        _side(shank, toe, min(rest + limit["ankle_plantarflexion"], pi)),
     )
     arm_end = length("forearm") + GRIP_SHARE * length("hand")
     arm = length("upper_arm") + arm_end
@@ -135,7 +144,8 @@ def linkage_of(athlete: Athlete) -> Linkage:
         reach=np.array([arm, arm, leg, leg]),
         fold=np.array([arm_fold, arm_fold, leg_fold, leg_fold]),
         knee_limit=thigh * np.array([cos(lift), sin(lift)]),
-        lateral_limit=leg * np.array([sin(limit["hip_abduction"]), sin(limit["hip_adduction"])]),
+        out_limit=leg * sin(limit["hip_abduction"]),
+        across=np.sin([ARM_ACROSS, ARM_ACROSS, limit["hip_adduction"], limit["hip_adduction"]]),
         head=length("neck_head"),
         chest_height=0.75 * length("trunk"),
         pelvis_space=length("pelvis_depth") / 2,

@@ -17,24 +17,26 @@ from numpy.typing import NDArray
 from climbpath.posture.barrier import System
 from climbpath.posture.batch import StanceBatch
 from climbpath.posture.limits import (
-    LegLimits,
+    HEIGHT_SIDE,
+    UPPER,
+    JointLimits,
     LimbGeometry,
     PointLimit,
-    leg_limits,
+    joint_limits,
     limb_geometry,
     point_limits,
     slack,
     turned,
     upright,
 )
-from climbpath.posture.linkage import Linkage
+from climbpath.posture.linkage import LIMB_SIDE, Linkage
 
 Array = NDArray[np.float64]
 
 CHUNK = 4096
 """Stances solved together: arrays of this length stay in the processor's cache."""
 
-STEPS = (14, 26, 30)
+STEPS = (16, 26, 30)
 """Newton steps from the first, second and third start."""
 
 DAMPING = (0.1, 0.01)
@@ -45,11 +47,17 @@ heavy while far from the optimum, where the turn's curvature is often negative."
 HARD_TOLERANCE = 1e-4
 """How far a hard limit may be missed by rounding of the iteration, m."""
 
-RETRY_BELOW = (0.08, 0.03)
+RETRY_BELOW = (0.03, 0.01)
 """Stances whose margin so far is under this (m) are solved from the next start too: a fold or a
 joint range can hold a start in a local optimum, and near zero that decides."""
 
-CONVERGED = 1e-5
+NOT_CONVEX = (1, 3, 4)
+"""Groups of limits whose allowed regions are not convex: fold, across and lift."""
+
+HELD_ABOVE = 0.05
+"""Multiplier above which such a limit counts as holding the optimum."""
+
+CONVERGED = 1e-4
 """Barrier weight under which an iteration counts as finished."""
 
 
@@ -98,7 +106,7 @@ def _solve_chunk(linkage: Linkage, batch: StanceBatch) -> Postures:
 
 
 def _start(linkage: Linkage, batch: StanceBatch, attempt: int) -> tuple[Array, Array]:
-    """A trunk between the contacts: upright, and on later attempts lower and farther out."""
+    """A trunk between the contacts: upright; then leaning from feet to hands; then farther out."""
     count = batch.size
     engaged = batch.engaged.astype(float)
     hang = linkage.trunk + 0.6 * linkage.reach[0]
@@ -109,13 +117,13 @@ def _start(linkage: Linkage, batch: StanceBatch, attempt: int) -> tuple[Array, A
     shift[0] = (batch.target[0] * engaged).sum(axis=0) / total
     shift[1] = ((batch.target[1] + offset) * engaged).sum(axis=0) / total
     out = (batch.target[2] * engaged).sum(axis=0) / total
-    shift[2] = np.maximum(out, 0.0) + linkage.pelvis_space + (0.08, 0.30, 0.05)[attempt]
+    shift[2] = np.maximum(out, 0.0) + linkage.pelvis_space + (0.08, 0.05, 0.30)[attempt]
     on_floor = batch.floor.any(axis=0)
     level = batch.floor_level + 0.9 * linkage.floor_reach
     stood = (level - batch.vertical[2] * shift[2]) / batch.vertical[1]
     shift[1] = np.where(on_floor, stood, shift[1])
     turn = upright(count)
-    if attempt == 2:
+    if attempt == 1:
         # Lean the shoulders toward the middle of the hands, hips toward that of the feet.
         hands = _mean_x(batch, slice(0, 2), shift[0])
         feet = _mean_x(batch, slice(2, 4), shift[0])
@@ -137,12 +145,13 @@ def _mean_x(batch: StanceBatch, limbs: slice, otherwise: Array) -> Array:
 class _State:
     """Where a chunk stands: geometry and every limit, evaluated once a step.
 
-    ``value`` and ``active`` list the limits in groups: reach, fold, the four of the legs (each
-    (4, N) or (2, N)), then those of trunk points and floor feet ((N,) each).
+    ``value`` and ``active`` list the limits in groups: reach, fold, height and across of all limbs
+    ((4, N) each), lift and out of the legs ((2, N)), then those of trunk points and floor feet
+    ((N,) each).
     """
 
     geometry: LimbGeometry
-    legs: LegLimits
+    joints: JointLimits
     points: list[PointLimit]
     value: list[Array]
     active: list[NDArray[np.bool_]]
@@ -152,19 +161,19 @@ def _evaluate(
     linkage: Linkage, batch: StanceBatch, turn: Array, shift: Array, spare: Array
 ) -> _State:
     geometry = limb_geometry(linkage, batch, turn, shift)
-    legs = leg_limits(linkage, geometry)
+    joints = joint_limits(linkage, geometry)
     points = point_limits(linkage, batch, turn, shift, spare)
     everywhere = np.ones(batch.size, dtype=bool)
     feet = batch.engaged[2:]
     value = [
         batch.reach - spare - geometry.distance,
         geometry.distance - linkage.fold[:, None],
-        legs.lift, legs.high, legs.out, legs.across,
+        joints.height, joints.across, joints.lift, joints.out,
         *(limit.value for limit in points),
     ]
-    active = [batch.engaged, batch.engaged, feet, feet, feet, feet]
+    active = [*(4 * [batch.engaged]), feet, feet]
     active += [everywhere if limit.active is None else limit.active for limit in points]
-    return _State(geometry, legs, points, value, active)
+    return _State(geometry, joints, points, value, active)
 
 
 def _descend(
@@ -175,8 +184,8 @@ def _descend(
     target = np.full(batch.size, 0.02)
     slacks: list[Array] = []
     multipliers: list[Array] = []
+    state = _evaluate(linkage, batch, turn, shift, spare)
     for _ in range(steps):
-        state = _evaluate(linkage, batch, turn, shift, spare)
         if not slacks:
             slacks = [np.maximum(value, 0.03) for value in state.value]
             multipliers = [np.where(active, 0.02 / s, 0.0)
@@ -194,9 +203,16 @@ def _descend(
             [turn[i, 0] * move[0] + turn[i, 1] * move[1] + turn[i, 2] * move[2] for i in range(3)]
         )
         spare = spare + length * step[6]
+        state = _evaluate(linkage, batch, turn, shift, spare)
     reached, hard = slack(linkage, batch, turn, shift)
     margin = np.where(hard >= -HARD_TOLERANCE, reached, np.minimum(reached, hard))
-    return Postures(margin, turn, shift), target < CONVERGED
+    # Folds, lifts, crossing, tilt and turn bound regions that are not convex: where one of them
+    # holds the optimum, another start may find a better one.
+    held = np.zeros(batch.size, dtype=bool)
+    directions = [k for k, limit in enumerate(state.points, start=6) if not limit.shifts]
+    for k in (*NOT_CONVEX, *directions):
+        held |= _sum(multipliers[k]) > HELD_ABOVE
+    return Postures(margin, turn, shift), (target < CONVERGED) & ~held
 
 
 def _advance(
@@ -243,9 +259,6 @@ def _to_boundary(value: Array, change: Array, active: NDArray[np.bool_]) -> Arra
     return ratio if ratio.ndim == 1 else np.asarray(ratio.min(axis=0))
 
 
-_UPPER = ((0, 0), (0, 1), (0, 2), (1, 1), (1, 2), (2, 2))
-
-
 def _newton(
     batch: StanceBatch, state: _State, slacks: list[Array], multipliers: list[Array], target: Array
 ) -> Array:
@@ -260,23 +273,31 @@ def _newton(
         weights.append(weight)
         rights.append(np.where(active, m + target / s - weight * value, 0.0))
     u = state.geometry.along
-    # Reach limits have slope -u, folds +u; both bend like the distance, (1 - u u^T) / d.
-    bend = (multipliers[0] - multipliers[1]) / state.geometry.distance
+    joints, cross = state.joints, state.joints.across_slope
+    # Reach limits have slope -u, folds +u; both bend like the distance, (1 - u u^T) / d, and so
+    # does the share of it in the limit on crossing.
+    sine = cross[0] * u[0] + cross[1] * u[1] + cross[2] * u[2] - LIMB_SIDE[:, None] * u[0]
+    bend = (multipliers[0] - multipliers[1] - sine * multipliers[3]) / state.geometry.distance
     along = weights[0] + weights[1] - bend
-    inner = [along * u[i] * u[j] + (bend if i == j else 0.0) for i, j in _UPPER]
+    inner = [along * u[i] * u[j] + weights[3] * cross[i] * cross[j] + (bend if i == j else 0.0)
+             for i, j in UPPER]
     # While the shoulder lifts with the hand, distance does not change along the trunk.
     inner[3] = np.where(state.geometry.rising, inner[3] - bend, inner[3])
-    pull = (rights[1] - rights[0]) * u
-    curve = (multipliers[1] - multipliers[0]) * u
-    legs = state.legs
-    for k, slope in ((2, legs.lift_slope), (3, legs.high_slope)):
-        pull[:, 2:] += rights[k] * slope
-        curve[:, 2:] += multipliers[k] * slope
-        for slot, (i, j) in enumerate(_UPPER):
-            inner[slot][2:] += weights[k] * slope[i] * slope[j]
-    pull[0, 2:] += legs.side * (rights[5] - rights[4])
-    curve[0, 2:] += legs.side * (multipliers[5] - multipliers[4])
-    inner[0][2:] += weights[4] + weights[5]
+    inner[3] = inner[3] + weights[2]
+    pull = (rights[1] - rights[0]) * u + rights[3] * cross
+    curve = (multipliers[1] - multipliers[0]) * u + multipliers[3] * cross
+    pull[1] += HEIGHT_SIDE[:, None] * rights[2]
+    curve[1] += HEIGHT_SIDE[:, None] * multipliers[2]
+    lift = joints.lift_slope
+    pull[:, 2:] += rights[4] * lift
+    curve[:, 2:] += multipliers[4] * lift
+    for slot, (i, j) in enumerate(UPPER):
+        inner[slot][2:] += weights[4] * lift[i] * lift[j]
+        inner[slot][2:] -= multipliers[4] * joints.lift_curve[slot]
+    side = LIMB_SIDE[2:, None]
+    pull[0, 2:] -= side * rights[5]
+    curve[0, 2:] -= side * multipliers[5]
+    inner[0][2:] += weights[5]
     system.add_limbs(state.geometry.point, inner, pull, curve, -weights[0] * u)
     system.matrix[6][6] += weights[0].sum(axis=0) + 1e-9
     system.right[6] += 1.0 - rights[0].sum(axis=0)
@@ -293,11 +314,15 @@ def _linear_change(state: _State, step: Array) -> list[Array]:
     moved = np.stack([v[(i + 1) % 3] * w[(i + 2) % 3] - v[(i + 2) % 3] * w[(i + 1) % 3] - u[i]
                       for i in range(3)])
     distance = (state.geometry.along * moved).sum(axis=0)
-    legs = state.legs
     feet = moved[:, 2:]
-    sideways = legs.side * feet[0]
-    changes = [-distance - t, distance, (legs.lift_slope * feet).sum(axis=0),
-               (legs.high_slope * feet).sum(axis=0), -sideways, sideways]
+    changes = [
+        -distance - t,
+        distance,
+        HEIGHT_SIDE[:, None] * moved[1],
+        (state.joints.across_slope * moved).sum(axis=0),
+        (state.joints.lift_slope * feet).sum(axis=0),
+        -LIMB_SIDE[2:, None] * feet[0],
+    ]
     for limit in state.points:
         n, o = limit.normal, limit.offset
         arm = [w[1] * o[2] - w[2] * o[1], w[2] * o[0] - w[0] * o[2], w[0] * o[1] - w[1] * o[0]]

@@ -153,11 +153,11 @@ def _too_many(demands: Sequence[Demand], sizes: Sequence[int], total: int) -> st
     longest = max((s for s, opens in zip(sizes, openings, strict=True) if opens), default=1)
     text = f"the conditions together need {total} states, {MAX_STATES} are possible: ask for"
     if longest == 1:
-        return f"{text} fewer than {touches} placements to include (each doubles the states)"
+        return f"{text} fewer placements to include (each of the {touches} doubles the states)"
     if touches == 0:
         return f"{text} a shorter opening, or fewer placements in one step of it"
     return (
-        f"{text} fewer than {touches} placements to include (each doubles the states)"
+        f"{text} fewer placements to include (each of the {touches} doubles the states)"
         f" or a shorter opening (it takes {longest} of them)"
     )
 

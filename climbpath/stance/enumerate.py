@@ -121,20 +121,23 @@ class _Search:
     def on_holds(self) -> list[Found]:
         """Stances on holds and the floor, from single contacts to all four limbs."""
         choices = self._choices()
-        parts = [self._solved((limb,), choices[limb][:, None])[0] for limb in Limb]
-        pairs = {}
-        for both in combinations(Limb, 2):
-            found, rows = self._solved(both, self._near(choices, both))
-            parts.append(found)
-            pairs[both] = self._table(rows)
+        singles = self._solved([((limb,), choices[limb][:, None]) for limb in Limb])
+        both = list(combinations(Limb, 2))
+        doubles = self._solved([(pair, self._near(choices, pair)) for pair in both])
+        parts = [singles[0], doubles[0]]
+        pairs = {pair: self._table(rows) for pair, rows in zip(both, doubles[1], strict=True)}
+        three = list(combinations(Limb, 3))
+        grown = [(limbs, rows) for limbs in three for rows in self._triples(limbs, pairs)]
+        found, possible = self._solved(grown)
+        parts.append(found)
         triples = {}
-        for three in combinations(Limb, 3):
-            blocks = [self._solved(three, rows) for rows in self._triples(three, pairs)]
-            parts += [found for found, _ in blocks]
-            rows = np.concatenate([r for _, r in blocks]) if blocks else np.zeros((0, 3), np.int64)
-            triples[three] = rows[np.argsort(self._key(rows))]
-        for rows in self._quads(pairs, triples):
-            parts.append(self._solved(tuple(Limb), rows)[0])
+        for limbs in three:
+            rows = np.concatenate(
+                [np.zeros((0, 3), np.int64),
+                 *(r for (own, _), r in zip(grown, possible, strict=True) if own == limbs)]
+            )
+            triples[limbs] = rows[np.argsort(self._key(rows))]
+        parts += [self._solved([(tuple(Limb), rows)])[0] for rows in self._quads(pairs, triples)]
         return parts
 
     def extended(self, base: Found, contacts: Ints) -> Found:
@@ -193,15 +196,25 @@ class _Search:
             result = result[~full]
         return result.astype(np.int64)
 
-    def _solved(self, limbs: tuple[Limb, ...], rows: Ints) -> tuple[Found, Ints]:
-        """Solve partial stances; return the possible ones and the rows worth extending."""
-        self._guard(len(rows))
-        contacts = np.full((len(rows), 4), FREE, dtype=np.int64)
-        contacts[:, list(limbs)] = np.where(rows == self.options.holds, FLOOR, rows)
+    def _solved(self, groups: list[tuple[tuple[Limb, ...], Ints]]) -> tuple[Found, list[Ints]]:
+        """Solve partial stances of several sets of limbs in one go.
+
+        Returns the possible stances, and for each group the rows worth extending.
+        """
+        total = sum(len(rows) for _, rows in groups)
+        self._guard(total)
+        contacts = np.full((total, 4), FREE, dtype=np.int64)
+        begin = 0
+        for limbs, rows in groups:
+            numbers = np.where(rows == self.options.holds, FLOOR, rows)
+            contacts[begin:begin + len(rows), list(limbs)] = numbers
+            begin += len(rows)
         found = solve(self.options, self.linkage, contacts)
         kept = found.take(found.margin >= self.keep_above)
         self.kept += len(kept.margin)
-        return kept, rows[found.margin >= self.extend_above]
+        possible = np.split(found.margin >= self.extend_above,
+                            np.cumsum([len(rows) for _, rows in groups])[:-1])
+        return kept, [rows[good] for (_, rows), good in zip(groups, possible, strict=True)]
 
     def _guard(self, more: int) -> None:
         needed = (self.kept + more) * BYTES_PER_STANCE

@@ -12,7 +12,12 @@ from hypothesis import strategies as st
 from route_cases import YEN, named_graph
 
 from climbpath.errors import UsageError
-from climbpath.route.alternatives import Solve, alternatives, share_difference
+from climbpath.route.alternatives import (
+    Alternatives,
+    Solve,
+    alternatives,
+    share_difference,
+)
 from climbpath.route.shortest import shortest_route
 
 SETTINGS = settings(derandomize=True, deadline=None, max_examples=100)
@@ -119,6 +124,45 @@ def test_found_ones_differ_and_the_first_is_best(
         assert costs[1:] == ([min(apart)] if apart else [])
 
 
+@SETTINGS
+@given(
+    st.dictionaries(
+        st.frozensets(st.integers(0, 6), min_size=1, max_size=4),
+        st.integers(0, 5),
+        min_size=1,
+        max_size=12,
+    )
+)
+def test_any_difference_ranks_all_where_none_contains_another(
+    pool: dict[frozenset[int], int],
+) -> None:
+    pool = {holds: cost for holds, cost in pool.items() if not any(o < holds for o in pool)}
+    ordered = sorted((cost, sorted(holds)) for holds, cost in pool.items())
+
+    def solve(forbidden: frozenset[int]) -> tuple[int, frozenset[int], None] | None:
+        left = [(cost, holds) for cost, holds in ordered if forbidden.isdisjoint(holds)]
+        return (left[0][0], frozenset(left[0][1]), None) if left else None
+
+    result = alternatives(solve, 100, 0.0, 100_000)
+    assert [(a.cost, sorted(a.holds)) for a in result.found] == ordered
+    assert result.stopped == "exhausted"
+
+
+def test_more_is_not_forbidden_where_less_was_too_much() -> None:
+    calls: list[list[int]] = []
+
+    def solve(forbidden: frozenset[int]) -> tuple[int, frozenset[int], None] | None:
+        calls.append(sorted(forbidden))
+        if 0 in forbidden:  # every way needs hold 0
+            return None
+        return len(forbidden), frozenset({0, 1, 2, 3}) - forbidden, None
+
+    alternatives(solve, 3, 1.0, 100)
+    assert calls[:2] == [[], [0]]
+    assert not [c for c in calls[2:] if 0 in c]
+    assert len(calls) == len({tuple(c) for c in calls})
+
+
 def test_the_limit_is_said() -> None:
     solve, _ = yen_solver()
     result = alternatives(solve, 7, 0.0, 4)
@@ -128,7 +172,7 @@ def test_the_limit_is_said() -> None:
 
 
 def test_no_result_at_all_is_exhausted() -> None:
-    result = alternatives(lambda forbidden: None, 3, 0.5, 10)
+    result: Alternatives[None] = alternatives(lambda forbidden: None, 3, 0.5, 10)
     assert (result.found, result.stopped, result.solves) == ((), "exhausted", 1)
 
 

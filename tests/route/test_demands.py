@@ -89,7 +89,7 @@ def test_the_product_holds_nothing_that_no_route_uses(
     graph: RouteGraph, demands: list[Demand]
 ) -> None:
     product = with_demands(graph, demands, [0], [graph.nodes - 1])
-    used_arcs: set[tuple[int, ...]] = set()
+    used_arcs: set[int] = set()
     for source in product.sources.nodes.tolist():
         for _, arcs in walks(product.graph, source, product.targets.tolist(), graph.nodes * 4):
             used_arcs.update(arcs)
@@ -100,6 +100,10 @@ def test_the_product_holds_nothing_that_no_route_uses(
         base = getattr(graph, name)[product.base_arc]
         assert getattr(product.graph, name).tolist() == base.tolist()
     assert product.graph.excursion.tolist() == graph.excursion[product.base_node].tolist()
+    # Ranks follow the original's; within a node, its states, which are numbered in order.
+    by_rank = np.argsort(product.graph.rank)
+    keys = list(zip(graph.rank[product.base_node[by_rank]], by_rank, strict=True))
+    assert keys == sorted(keys)
     assert graph.tails()[product.base_arc].tolist() == (
         product.base_node[product.graph.tails()].tolist()
     )
@@ -173,11 +177,11 @@ def test_states_never_fall_and_too_many_are_refused() -> None:
     table = compile_demands(touches, 6)
     assert table.states == 64
     assert (table.next_state >= np.arange(64)[:, None]).all()
-    with pytest.raises(UsageError, match=r"128 states.*fewer than 7 placements"):
+    with pytest.raises(UsageError, match=r"128 states.*fewer placements to include.*the 7 "):
         compile_demands([*touches, Touch(frozenset({0}))], 6)
     opening = Opening((frozenset(range(6)), frozenset({1})), frozenset())
     assert compile_demands([Opening(opening.steps[:1], frozenset())], 6).states == 64
     with pytest.raises(UsageError, match=r"65 states.*shorter opening"):
         compile_demands([opening], 6)
-    with pytest.raises(UsageError, match=r"fewer than 1 placements.*it takes 64"):
+    with pytest.raises(UsageError, match=r"fewer placements.*the 1 .*it takes 64"):
         compile_demands([touches[0], Opening(opening.steps[:1], frozenset())], 6)

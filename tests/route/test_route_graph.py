@@ -129,7 +129,7 @@ def test_masks_of_wrong_shape_are_refused() -> None:
     with pytest.raises(DataError, match="node_mask"):
         square().keep(node_mask=np.ones(3, bool))
     with pytest.raises(DataError, match="arc_mask"):
-        square().keep(arc_mask=np.ones(4, np.int64))  # type: ignore[arg-type]
+        square().keep(arc_mask=np.ones(4, np.int64))
 
 
 @SETTINGS

@@ -186,7 +186,7 @@ def test_malformed_arguments_are_refused() -> None:
     with pytest.raises(DataError, match="weight"):
         shortest_route(graph, graph.time_us[:-1], [0], [4])
     with pytest.raises(DataError, match="weight"):
-        shortest_route(graph, graph.time_us.astype(float), [0], [4])  # type: ignore[arg-type]
+        shortest_route(graph, graph.time_us.astype(float), [0], [4])
     with pytest.raises(DataError, match="0 or more"):
         shortest_route(graph, graph.time_us - 1, [0], [4])
     with pytest.raises(DataError, match=r"tie_costs\[0\]"):

@@ -8,10 +8,11 @@ from hypothesis import given, settings
 from hypothesis import strategies as st
 from route_cases import UNSUPPORTED, named_graph, node_lists, simple_routes, small_graphs
 
-from climbpath.errors import TooLargeError, UsageError
+from climbpath.errors import DataError, TooLargeError, UsageError
 from climbpath.route.graph import RouteGraph
-from climbpath.route.shortest import recost
+from climbpath.route.shortest import cost_to_go, distances, recost
 from climbpath.route.weights import (
+    least_through,
     supported_trade_offs,
     weight_area,
     weight_both,
@@ -102,6 +103,52 @@ def test_the_corners_of_all_routes_are_found(graph: RouteGraph, data: st.DataObj
         assert rest in starts.tolist()
 
 
+@pytest.mark.parametrize("seed", range(6))
+def test_many_corners_are_found_on_a_larger_graph(seed: int) -> None:
+    # 10 layers of 6 nodes; all best pairs by carrying every undominated one forward.
+    random = np.random.default_rng(seed)
+    layers, width = 10, 6
+    first = np.arange((layers - 1) * width)
+    tail = np.repeat(first, width)
+    head = (tail // width + 1) * width + np.tile(np.arange(width), first.size)
+    costs = random.integers(0, 100, (2, tail.size))
+    graph = RouteGraph.from_arcs(layers * width, tail, head, costs[0], costs[1])
+    labels: list[set[tuple[int, int]]] = [set() for _ in range(layers * width)]
+    for node in range(width):
+        labels[node] = {(0, 0)}
+    for node in range(width, layers * width):
+        into = np.flatnonzero(head == node)
+        every = {
+            (x + int(costs[0, arc]), y + int(costs[1, arc]))
+            for arc in into
+            for x, y in labels[tail[arc]]
+        }
+        for x, y in sorted(every):
+            if not labels[node] or y < min(q for _, q in labels[node]):
+                labels[node].add((x, y))
+    last = range((layers - 1) * width, layers * width)
+    expected = hull_corners(set().union(*(labels[node] for node in last)))
+    found = supported_trade_offs(graph, range(width), last)
+    assert len(expected) > 4
+    assert [(p.time_us, p.area) for p in found] == expected
+    assert [recost(graph, p.route, graph.area) for p in found] == [p.area for p in found]
+
+
+@SETTINGS
+@given(small_graphs(most_nodes=6, most_cost=9), st.data())
+def test_least_cost_through_each_arc(graph: RouteGraph, data: st.DataObject) -> None:
+    sources, targets = data.draw(node_lists(graph)), data.draw(node_lists(graph))
+    through = least_through(graph, graph.time_us, sources, targets)
+    best = np.full(graph.arcs, np.inf)
+    for _, arcs in simple_routes(graph, sources, targets):
+        best[arcs] = np.minimum(best[arcs], graph.time_us[arcs].sum())
+    # A walk may come by a node twice, so it may reach arcs that no simple route has.
+    assert (through <= best).all()
+    start, end = distances(graph, graph.time_us, sources), cost_to_go(graph, graph.time_us, targets)
+    expected = start[graph.tails()] + graph.time_us + end[graph.head]
+    assert through.tolist() == expected.tolist()
+
+
 def test_weights_are_exact_in_their_units() -> None:
     graph = RouteGraph.from_arcs(3, [0, 1], [1, 2], [250_000, 7], [3_000, 11])
     assert weight_time(graph).tolist() == [250_000, 7]
@@ -122,4 +169,7 @@ def test_weights_that_make_no_sense_are_refused() -> None:
         weighted(graph, -1, 1)
     with pytest.raises(TooLargeError):
         weighted(graph, 2**13, 1)
+    for begun in (np.array([0.5]), np.array([1, 2]), np.array([-1])):
+        with pytest.raises(DataError, match="sources"):
+            supported_trade_offs(graph, [0], [1], start_area=begun)
     assert weighted(graph, 2**12, 1).tolist() == [2**52 + 1]
