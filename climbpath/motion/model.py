@@ -78,19 +78,19 @@ class PacedMotion:
     repeat_wait: float = 0.15
     hand_start: float = 0.10
     foot_start: float = 0.08
-    hand_speed: float = 3.2
-    foot_speed: float = 3.6
+    hand_speed: float = 3.5
+    foot_speed: float = 4.0
     settle: float = 0.06
     settle_poor: float = 0.10
     up_speed: dict[tuple[bool, bool], float] = field(
         default_factory=lambda: {
-            (True, True): 2.4,
-            (True, False): 1.2,
-            (False, True): 1.0,
+            (True, True): 3.0,
+            (True, False): 2.0,
+            (False, True): 1.6,
             (False, False): 0.5,
         }
     )
-    side_speed: float = 1.5
+    side_speed: float = 2.0
     take_off_push: float = 0.20
     take_off_speed: float = 2.0
 

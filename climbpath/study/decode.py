@@ -1,0 +1,183 @@
+"""From a route through the graph to a plan: steps with time, contacts, body and figures."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+
+import numpy as np
+from numpy.typing import NDArray
+
+from climbpath.contacts import FLOOR, FREE, LIMB_NAMES, Limb
+from climbpath.posture.assembly import JOINTS, assemble
+from climbpath.route.nodes import LANDED, PHASES
+from climbpath.route.shortest import Route
+from climbpath.stance.enumerate import batch_of
+from climbpath.study.climb import Climb
+from climbpath.study.results import Plan, PlanStep, Point2, Point3
+
+Ints = NDArray[np.int64]
+Array = NDArray[np.float64]
+
+
+@dataclass(frozen=True)
+class Leg:
+    """A stretch of a route between two stances at rest.
+
+    ``begin`` and ``end`` are samples, times in us; ``landed`` the limbs that landed on the way.
+    """
+
+    begin: int
+    end: int
+    begin_us: int
+    end_us: int
+    flight: bool
+    landed: frozenset[int]
+
+
+def legs_of(climb: Climb, route: Route, start_us: int) -> list[Leg]:
+    """Cut a route into its moves: each from a rest to the last landing before the next rest."""
+    code, graph = climb.search.code, climb.search.graph
+    nodes = [int(n) for n in route.nodes]
+    clock = start_us
+    legs: list[Leg] = []
+    begin, begin_us, flight = nodes[0], clock, False
+    landed: set[int] = set()
+    for tail, head, arc in zip(nodes[:-1], nodes[1:], route.arcs, strict=True):
+        clock += int(graph.time_us[arc])
+        flight |= head >= code.plain
+        event = int(graph.event[arc])
+        if event >= 0:
+            landed.add(code.landing(event)[0])
+        plain = head < code.plain
+        settles = tail < code.plain and tail % PHASES == LANDED and head % PHASES != LANDED
+        if settles or (head == nodes[-1] and plain):
+            end = tail if settles else head
+            legs.append(Leg(int(code.sample(np.array(begin))), int(code.sample(np.array(end))),
+                            begin_us, clock, flight, frozenset(landed)))
+            begin, begin_us, flight = head, clock, False
+            landed.clear()
+    return legs
+
+
+def plan_of(climb: Climb, route: Route, rank: int) -> Plan:
+    """The plan of a route, all figures taken from the route's own nodes and arcs."""
+    search = climb.search
+    source = int(np.flatnonzero(climb.sources == route.nodes[0])[0])
+    start_us = int(climb.source_time[source])
+    legs = legs_of(climb, route, start_us)
+    samples = [int(search.code.sample(route.nodes[0])), *(leg.end for leg in legs)]
+    clock = [0, *(leg.end_us for leg in legs)]
+    steps = _steps(climb, legs, samples, clock)
+    total = start_us + int(search.graph.time_us[route.arcs].sum())
+    area = int(climb.source_area[source]) + int(search.graph.area[route.arcs].sum())
+    all_samples = search.code.sample(route.nodes)
+    path = search.stances.com[all_samples[all_samples >= 0]]
+    moves = np.diff(path, axis=0)
+    gained = path[-1, 1] - path[0, 1]
+    events = [step for step in steps[1:] for limb in step.moved
+              if limb in ("LH", "RH") and step.contacts[limb] != "free"]
+    margins = [step.margin_mm for step in steps if step.margin_mm is not None]
+    off = np.abs(path[:, 0] - climb.wall.line_x)
+    seconds = total / 1e6
+    return Plan(
+        rank=rank,
+        time_s=seconds,
+        lattice_time_s=seconds,
+        expected_time_s=None,
+        chance_clean=None,
+        time_interval_s=None,
+        lattice_error_s=None,
+        pad_off_s=_pad_off(climb, legs, samples),
+        lateral_area_mm_s=area / 1e3,
+        lateral_mean_mm=area / 1e3 / seconds,
+        lateral_max_mm=float(off.max()) * 1e3,
+        sideways_mm=float(np.abs(moves[:, 0]).sum()) * 1e3,
+        path_ratio=float(np.linalg.norm(moves, axis=1).sum() / gained) if gained > 1e-6 else 1.0,
+        hand_moves=len(events),
+        hand_holds=_hand_holds(steps),
+        margin_min_mm=min(margins) if margins else None,
+        load_max=None,
+        steps=steps,
+    )
+
+
+def _hand_holds(steps: tuple[PlanStep, ...]) -> tuple[str, ...]:
+    """Ids in order of first touch by a hand; hands that start together count from the left."""
+    seen: dict[str, None] = {}
+    for step in steps:
+        for limb in ("LH", "RH"):
+            if step.contacts[limb] != "free":
+                seen.setdefault(step.contacts[limb])
+    return tuple(seen)
+
+
+def _pad_off(climb: Climb, legs: list[Leg], samples: list[int]) -> float | None:
+    """When the last foot leaves the ground: the beginning of the move in which it does."""
+    stances = climb.search.stances
+    owner = stances.sample_stance
+    for leg in legs:
+        before = (stances.contacts[owner[leg.begin], 2:] == FLOOR).any()
+        after = (stances.contacts[owner[leg.end], 2:] == FLOOR).any()
+        if before and not after:
+            return leg.begin_us / 1e6
+    return None
+
+
+def _steps(climb: Climb, legs: list[Leg], samples: list[int], clock: list[int]
+           ) -> tuple[PlanStep, ...]:
+    """All steps, bodies assembled together."""
+    search = climb.search
+    stances = search.stances
+    index = np.array(samples)
+    owner = stances.sample_stance[index]
+    batch = batch_of(climb.options, climb.linkage, stances.contacts[owner])
+    joints = assemble(climb.linkage, batch, stances.turn[..., index], stances.shift[:, index])
+    world = np.moveaxis(batch.to_world(np.moveaxis(joints, 0, 1)), (0, 1, 2), (2, 1, 0))
+    surface = climb.options.surface
+    placed = surface.to_surface(world) * 1e3
+    com = surface.to_surface(stances.com[index]) * 1e3
+    points = surface.to_surface(stances.points[owner]) * 1e3
+    steps = []
+    for k, sample in enumerate(samples):
+        contacts = stances.contacts[owner[k]]
+        before = stances.contacts[owner[k - 1]] if k else contacts
+        landed = legs[k - 1].landed if k else frozenset()
+        moved = tuple(LIMB_NAMES[limb] for limb in Limb
+                      if contacts[limb] != before[limb] or limb in landed)
+        kind = "start" if k == 0 else "flight" if legs[k - 1].flight else "move"
+        if k == len(samples) - 1 and k:
+            kind = "finish"
+        where: dict[str, Point2] = {}
+        for limb in Limb:
+            if contacts[limb] == FLOOR:
+                toe = placed[k, JOINTS.index(LIMB_NAMES[limb])]
+                where[LIMB_NAMES[limb]] = (float(toe[0]), float(toe[1]))
+            elif contacts[limb] != FREE:
+                where[LIMB_NAMES[limb]] = (float(points[k, limb, 0]), float(points[k, limb, 1]))
+        speed = None
+        if k:
+            change = stances.com[sample] - stances.com[samples[k - 1]]
+            lasted = (clock[k] - max(clock[k - 1], legs[0].begin_us)) / 1e6
+            speed = float(np.linalg.norm(change)) / lasted if lasted > 0 else None
+        steps.append(PlanStep(
+            step=k,
+            time_s=clock[k] / 1e6,
+            kind=kind,
+            moved=moved,
+            contacts={LIMB_NAMES[limb]: climb.options.name(int(contacts[limb])) for limb in Limb},
+            points_mm=where,
+            com_mm=_point(com[k]),
+            joints_mm={name: _point(placed[k, j]) for j, name in enumerate(JOINTS)},
+            speed_m_s=speed,
+            margin_mm=float(stances.margin[owner[k]]) * 1e3,
+            load=None,
+            load_by_limb={},
+        ))
+    return tuple(steps)
+
+
+def _point(values: Array) -> Point3:
+    return (float(values[0]), float(values[1]), float(values[2]))
+
+
+
