@@ -136,8 +136,8 @@ def _planes(
         other = np.where((lean[below] < lean[own]) & (from_fold < 1.0), below, other)
         for slot, section in enumerate((own, other)):
             normal = np.einsum("ijn,nj->in", axes, surface.normal[section])
-            offset = np.einsum("nj,jn->n", surface.normal[section], -origin)
-            offset += np.einsum("nj,nj->n", surface.normal[section], surface.origin[section])
+            offset = np.einsum("nj,jn->n", surface.normal[section], origin)
+            offset -= np.einsum("nj,nj->n", surface.normal[section], surface.origin[section])
             planes[which, slot, :3] = normal
             planes[which, slot, 3] = offset
     return planes
