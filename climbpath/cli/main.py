@@ -2,7 +2,10 @@
 
 from __future__ import annotations
 
+import contextlib
 import importlib
+import io
+import os
 import sys
 from typing import NoReturn
 
@@ -17,6 +20,12 @@ COMMANDS = {
     "athlete": ("climbpath.cli.athlete", "Write and show athlete files."),
 }
 """Command name: (module, one-line help). The module's command object is called ``command``."""
+
+INTERRUPTED = 130
+"""Exit code after Ctrl-C: 128 and the number of the signal."""
+
+MESSAGE_WIDTH = 600
+"""Longest line of a message, columns."""
 
 
 class _LazyGroup(click.Group):
@@ -44,18 +53,54 @@ def climbpath() -> None:
 
 def run() -> NoReturn:
     """Entry point: turns the package's errors into messages on stderr and exit codes."""
+    _make_output_safe()
+    try:
+        sys.exit(_run())
+    except KeyboardInterrupt:
+        # Between the blocks that catch it: while a message is being written.
+        sys.exit(INTERRUPTED)
+
+
+def _run() -> int:
     try:
         result = climbpath.main(standalone_mode=False)
     except ClimbpathError as error:
-        click.echo(f"climbpath: {error}", err=True)
-        sys.exit(error.exit_code)
-    except click.exceptions.Abort:
-        click.echo("climbpath: interrupted", err=True)
-        sys.exit(130)
+        _complain(str(error))
+        return error.exit_code
+    except (click.exceptions.Abort, KeyboardInterrupt):
+        _complain("interrupted")
+        return INTERRUPTED
     except click.ClickException as error:
         error.show()
-        sys.exit(error.exit_code)
-    except BrokenPipeError:
-        sys.stderr.close()
-        sys.exit(1)
-    sys.exit(result if isinstance(result, int) else 0)
+        return error.exit_code
+    except MemoryError:
+        _complain("this needs more memory than there is")
+        return 1
+    except OSError as error:
+        # Input and output files raise errors of the package: what is left is standard output.
+        _drop_output()
+        if not isinstance(error, BrokenPipeError):
+            _complain(f"standard output: {error.strerror or error}")
+        return 1
+    return result if isinstance(result, int) else 0
+
+
+def _complain(message: str) -> None:
+    """A message on stderr, a line for each problem, with nothing in it that moves a cursor."""
+    from climbpath.figure.names import printable
+
+    lines = (printable(line, MESSAGE_WIDTH) for line in message.split("\n"))
+    click.echo("climbpath: " + "\n".join(lines), err=True)
+
+
+def _make_output_safe() -> None:
+    """Let a terminal that lacks a letter be shown its code, where Python would stop."""
+    if isinstance(sys.stdout, io.TextIOWrapper):
+        sys.stdout.reconfigure(errors="backslashreplace")
+
+
+def _drop_output() -> None:
+    """Send what standard output still holds nowhere, or Python would try again when it ends."""
+    if sys.stdout is not None:
+        with contextlib.suppress(OSError, ValueError):
+            os.dup2(os.open(os.devnull, os.O_WRONLY), sys.stdout.fileno())

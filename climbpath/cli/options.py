@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Callable
+from collections.abc import Callable, Mapping
 from typing import TYPE_CHECKING, Any, TypeVar
 
 import click
@@ -78,14 +78,34 @@ def resolve_athlete(
     )
 
 
-def write_json(document: object, target: str) -> None:
+def write_json(document: Mapping[str, object], target: str) -> None:
     """One JSON document to a file, or to standard output for "-"."""
-    import json
+    from climbpath.study.document import dump_json
 
+    write_text(dump_json(document), target)
+
+
+def write_text(text: str, target: str) -> None:
+    """Text to a file, or to standard output for "-"."""
     from climbpath.files import write_atomically
 
-    text = json.dumps(document, indent=2, ensure_ascii=False, allow_nan=False) + "\n"
     if target == "-":
         click.echo(text, nl=False)
     else:
         write_atomically(target, text)
+
+
+def quiet_drawing() -> None:
+    """Load matplotlib so that nothing on this machine changes a picture or adds a message.
+
+    Settings files and MPLBACKEND do not count, and it says nothing about folders that it cannot
+    write to.
+    """
+    import logging
+    import os
+
+    logging.getLogger("matplotlib").setLevel(logging.CRITICAL)
+    os.environ.pop("MPLBACKEND", None)  # a name that it does not know would stop the import
+    import matplotlib as mpl
+
+    mpl.rcdefaults()

@@ -2,7 +2,6 @@
 
 from __future__ import annotations
 
-import sys
 from typing import TYPE_CHECKING
 
 import click
@@ -37,7 +36,6 @@ def check(files: tuple[str, ...]) -> None:
         else:
             click.echo(f"{name}: {summary(wall)}")
     if problems:
-        sys.stdout.flush()
         raise DataError(problems)
 
 

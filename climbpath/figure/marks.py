@@ -7,8 +7,9 @@ black and white says the same.
 from __future__ import annotations
 
 import functools
+import itertools
 import math
-from collections.abc import Iterable, Iterator, Mapping
+from collections.abc import Collection, Iterable, Iterator, Mapping
 from dataclasses import dataclass
 from typing import TYPE_CHECKING, Any
 
@@ -70,6 +71,20 @@ LINKS = (
     ("ankle_R", "RF"),
 )
 """Lines of the stick body, by joint names."""
+LIMB_OF_LINK = {
+    pair: limb
+    for limb, chain in (
+        ("LH", ("shoulder_L", "elbow_L", "wrist_L", "LH")),
+        ("RH", ("shoulder_R", "elbow_R", "wrist_R", "RH")),
+        ("LF", ("hip_L", "knee_L", "ankle_L", "LF")),
+        ("RF", ("hip_R", "knee_R", "ankle_R", "RF")),
+    )
+    for pair in itertools.pairwise(chain)
+}
+"""The limb each line of an arm or a leg belongs to."""
+BODY_LINE: dict[str, Any] = {"color": BODY, "lw": 1.3, "ls": "-", "alpha": 0.75}
+FREE_LINE: dict[str, Any] = {"color": BODY, "lw": 1.0, "ls": (0, (1, 1.8)), "alpha": 0.75}
+"""Line keywords of the stick body, and of its limbs that touch nothing."""
 TORSO = ("shoulder_L", "shoulder_R", "hip_R", "hip_L")
 
 
@@ -187,9 +202,15 @@ def draw_badge(
 
 
 def draw_body(
-    ax: Axes, joints_mm: Mapping[str, tuple[float, float, float]], step: int
+    ax: Axes,
+    joints_mm: Mapping[str, tuple[float, float, float]],
+    step: int,
+    free: Collection[str] = (),
 ) -> list[Artist]:
-    """Draw the stick body of one step, its number at the head; joints that lack are left out."""
+    """Draw the stick body of one step, its number at the head; joints that lack are left out.
+
+    The limbs named in ``free`` touch nothing: they are dotted and thin.
+    """
     from matplotlib.collections import LineCollection
     from matplotlib.patches import Circle, Polygon
     from matplotlib.patheffects import withStroke
@@ -201,9 +222,16 @@ def draw_body(
             [points[name] for name in TORSO], facecolor=BODY, alpha=0.16, lw=0, zorder=3
         )
         artists.append(ax.add_patch(torso))
-    lines = [[points[a], points[b]] for a, b in LINKS if a in points and b in points]
+    shown = [pair for pair in LINKS if pair[0] in points and pair[1] in points]
+    hanging = [LIMB_OF_LINK.get(pair) in free for pair in shown]
     links = LineCollection(
-        lines, colors=BODY, linewidths=1.3, alpha=0.75, capstyle="round", zorder=3.1
+        [[points[a], points[b]] for a, b in shown],
+        colors=BODY,
+        linewidths=[FREE_LINE["lw"] if off else BODY_LINE["lw"] for off in hanging],
+        linestyles=[FREE_LINE["ls"] if off else "-" for off in hanging],
+        alpha=0.75,
+        capstyle="round",
+        zorder=3.1,
     )
     artists.append(ax.add_collection(links, autolim=False))
     if "neck" in points and "head" in points:

@@ -10,7 +10,8 @@ from typing import TYPE_CHECKING, Any, Literal
 from climbpath.contacts import LIMB_NAMES
 from climbpath.errors import UsageError
 from climbpath.figure.marks import (
-    BODY,
+    BODY_LINE,
+    FREE_LINE,
     GREY,
     INK,
     LIMB_LOOKS,
@@ -107,7 +108,7 @@ def draw_overlay(
         color=INK, zorder=1.6,
     )  # fmt: skip
     chosen = body_steps(plan.steps, bodies)
-    drawn = {s.step: tuple(draw_body(ax, s.joints_mm, s.step)) for s in chosen}
+    drawn = {s.step: tuple(draw_body(ax, s.joints_mm, s.step, _free_limbs(s))) for s in chosen}
     path = _draw_path(ax, plan.steps)
     ax.set_xlim(-EDGE, wall.width + EDGE)
     ax.set_ylim(low, high)
@@ -134,6 +135,10 @@ def body_steps(steps: Sequence[PlanStep], bodies: Bodies) -> list[PlanStep]:
         rest.remove(nearest)
         chosen.append(nearest)
     return sorted(chosen, key=lambda step: step.step)
+
+
+def _free_limbs(step: PlanStep) -> list[str]:
+    return [limb for limb in LIMB_NAMES if step.contacts.get(limb) == "free"]
 
 
 def _draw_path(ax: Axes, steps: Sequence[PlanStep]) -> Line2D:
@@ -184,8 +189,11 @@ def _draw_placements(
     return tuple(badges)
 
 
-def draw_legend(ax: Axes) -> Legend:
-    """Draw the key to an overlay into ``ax``, whose frame is taken away."""
+def draw_legend(ax: Axes, plan: Plan | None = None) -> Legend:
+    """Draw the key to an overlay into ``ax``, whose frame is taken away.
+
+    With ``plan`` the marks for flights, smears and free limbs are left out where it has none.
+    """
     from matplotlib.lines import Line2D
     from matplotlib.patches import Patch
 
@@ -194,12 +202,17 @@ def draw_legend(ax: Axes) -> Legend:
         for limb, look in LIMB_LOOKS.items()
     ]
     dot: dict[str, Any] = {"marker": "o", "ms": 4.2, "mfc": INK, "mec": "white"}
+    flight = Line2D([], [], ls="none", marker="D", ms=5.2, mfc="white", mec=INK, label="flight")
+    smear = Line2D([], [], ls="none", marker="x", ms=4, color=GREY, label="smear")
+    free = Line2D([], [], label="limb that touches nothing", **FREE_LINE)
+    contacts = {name for step in plan.steps for name in step.contacts.values()} if plan else set()
     handles += [
         Line2D([], [], color=INK, lw=1.7, label="centre of mass, dot = step", **dot),
-        Line2D([], [], ls="none", marker="D", ms=5.2, mfc="white", mec=INK, label="flight"),
+        *([flight] if plan is None or any(s.kind == "flight" for s in plan.steps) else []),
         Line2D([], [], ls=(0, (4, 3)), color=INK, lw=0.9, label="line"),
-        Line2D([], [], color=BODY, lw=1.3, alpha=0.75, label="body, number = step"),
-        Line2D([], [], ls="none", marker="x", ms=4, color=GREY, label="smear"),
+        Line2D([], [], label="body, number = step", **BODY_LINE),
+        *([free] if plan is None or "free" in contacts else []),
+        *([smear] if plan is None or "smear" in contacts else []),
         Patch(label="hold in use", **USED_HOLD),
         Patch(label="other hold", **OTHER_HOLD),
     ]
@@ -271,7 +284,7 @@ def overlay_figure(
     left = layout.size[0] - SIDE - RIGHT
     bottom = layout.foot + 2.75
     draw_time_height(plan, figure.add_axes(layout.box(left, bottom, SIDE, top - bottom)))
-    draw_legend(figure.add_axes(layout.box(left - 0.3, layout.foot, SIDE + 0.3, 2.3)))
+    draw_legend(figure.add_axes(layout.box(left - 0.3, layout.foot, SIDE + 0.3, 2.3)), plan)
     _write_title(figure, layout, result, plan)
     for place, text in enumerate(caution_lines):
         y = layout.foot - 0.52 - place * CAUTION_LINE
@@ -291,11 +304,16 @@ def _layout(
     column = (across * scale, up * scale)
     width = LEFT + len(windows) * (column[0] + GAP) + SIDE + RIGHT + 0.2
     letters = int((width - LEFT - RIGHT) * 72 / (0.56 * CAUTION_SIZE))
-    text = " ".join(drawable(caution, 400) for caution in cautions)
+    text = " ".join(_sentence(drawable(caution, 400)) for caution in cautions)
     lines = textwrap.wrap(text, letters)
     foot = 0.62 + len(lines) * CAUTION_LINE
     height = foot + max(column[1], LEAST_HEIGHT) + TOP
     return _Layout(tuple(windows), column, foot, (width, height)), lines
+
+
+def _sentence(text: str) -> str:
+    """Text that can stand before another sentence."""
+    return text if text.endswith((".", "!", "?", "…")) else f"{text}."
 
 
 def _dress(ax: Axes, y_label: str) -> None:

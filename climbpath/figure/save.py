@@ -44,12 +44,18 @@ def figure_format(path: str | os.PathLike[str]) -> str:
 def save_figure(figure: Figure, path: str | os.PathLike[str]) -> None:
     """Write a figure as PNG, SVG or PDF, by the ending of the name.
 
-    The bytes depend on the figure alone: no dates, no random ids. UsageError for an ending that is
-    not known, DataError if the place cannot be written.
+    UsageError for an ending that is not known, DataError if the place cannot be written.
+    """
+    write_atomically(path, figure_bytes(figure, figure_format(path)))
+
+
+def figure_bytes(figure: Figure, kind: str) -> bytes:
+    """A figure as the content of a file of one of ``FORMATS``.
+
+    The bytes depend on the figure alone: no dates, no random ids.
     """
     import matplotlib as mpl
 
-    kind = figure_format(path)
     metadata: dict[str, dict[str, Any]] = {
         "png": {"Software": None},
         "svg": {"Date": None, "Creator": None},
@@ -63,4 +69,4 @@ def save_figure(figure: Figure, path: str | os.PathLike[str]) -> None:
         # A letter that the font lacks is drawn as a box; that is no reason to speak up or stop.
         warnings.filterwarnings("ignore", message=r"Glyph \d+ .* missing from font")
         figure.savefig(stream, format=kind, dpi=DOTS_PER_INCH, metadata=metadata[kind])
-    write_atomically(path, stream.getvalue())
+    return stream.getvalue()

@@ -38,7 +38,7 @@ def plan_table(result: PlanResult) -> str:
         if len(result.plans) > 1:
             blocks.append(_summary_lines(result.plans))
     elif result.why_not is not None:
-        blocks.append(_why_not_lines(result.why_not))
+        blocks.append(why_not_lines(result.why_not))
     if result.trade_off:
         blocks.append(_trade_off_lines(result.trade_off))
     if result.cautions:
@@ -189,7 +189,7 @@ def _trade_off_lines(points: Sequence[tuple[float, float, float]]) -> list[str]:
     return lines
 
 
-def _why_not_lines(why_not: WhyNot) -> list[str]:
+def why_not_lines(why_not: WhyNot) -> list[str]:
     """Why nothing gets through, in sentences."""
     if why_not.limb is None:
         what = f"No way up: it stops at step {why_not.step}."

@@ -131,28 +131,40 @@ class PointLimit:
     active: NDArray[np.bool_] | None = None
 
 
+@dataclass(frozen=True)
+class PointLayout:
+    """Which point limits a batch has: planes (point, slot) of the trunk, and feet on the floor."""
+
+    planes: tuple[tuple[int, int], ...]
+    feet: tuple[int, ...]
+
+
+def point_layout(batch: StanceBatch) -> PointLayout:
+    """The limits that some stance of the batch needs; a part of the batch needs no others."""
+    planes = [(which, slot) for which in range(2) for slot in range(2)
+              if not slot or not np.array_equal(batch.plane[which, 0], batch.plane[which, 1])]
+    return PointLayout(tuple(planes), tuple(foot for foot in (2, 3) if batch.floor[foot].any()))
+
+
 def point_limits(
-    linkage: Linkage, batch: StanceBatch, turn: Array, shift: Array, spare: Array
+    linkage: Linkage, batch: StanceBatch, turn: Array, shift: Array, spare: Array,
+    layout: PointLayout | None = None,
 ) -> list[PointLimit]:
     """Trunk clear of the surface, trunk tilt and turn, and feet on the floor."""
+    chosen = layout or point_layout(batch)
     limits: list[PointLimit] = []
     offsets = (np.zeros(3), np.array([0.0, linkage.chest_height, 0.0]))
     spaces = (linkage.pelvis_space, linkage.chest_space)
-    for which, (offset, space) in enumerate(zip(offsets, spaces, strict=True)):
-        for slot in range(2):
-            plane = batch.plane[which, slot]
-            if slot and np.array_equal(plane, batch.plane[which, 0]):
-                continue
-            normal = _into_trunk(turn, plane[:3])
-            value = _dot(plane[:3], shift) + plane[3] + _dot(offset, normal) - space
-            limits.append(PointLimit(value, normal, offset, True, False))
+    for which, slot in chosen.planes:
+        plane, offset = batch.plane[which, slot], offsets[which]
+        normal = _into_trunk(turn, plane[:3])
+        value = _dot(plane[:3], shift) + plane[3] + _dot(offset, normal) - spaces[which]
+        limits.append(PointLimit(value, normal, offset, True, False))
     up, out = np.array([0.0, 1.0, 0.0]), np.array([0.0, 0.0, 1.0])
     limits.append(PointLimit(turn[1, 1] - TILT_LIMIT, turn[1], up, False, False))
     limits.append(PointLimit(turn[2, 2] - TURN_LIMIT, turn[2], out, False, False))
-    for foot in (2, 3):
+    for foot in chosen.feet:
         active = batch.floor[foot]
-        if not active.any():
-            continue
         normal = _into_trunk(turn, batch.vertical)
         root = linkage.roots[foot]
         height = _dot(batch.vertical, shift) + _dot(root, normal) - batch.floor_level

@@ -21,9 +21,11 @@ from climbpath.posture.limits import (
     UPPER,
     JointLimits,
     LimbGeometry,
+    PointLayout,
     PointLimit,
     joint_limits,
     limb_geometry,
+    point_layout,
     point_limits,
     slack,
     turned,
@@ -32,11 +34,12 @@ from climbpath.posture.limits import (
 from climbpath.posture.linkage import LIMB_SIDE, Linkage
 
 Array = NDArray[np.float64]
+Ints = NDArray[np.int64]
 
 CHUNK = 4096
 """Stances solved together: arrays of this length stay in the processor's cache."""
 
-STEPS = (16, 26, 30)
+STEPS = (20, 26, 30)
 """Newton steps from the first, second and third start."""
 
 DAMPING = (0.1, 0.01)
@@ -57,8 +60,13 @@ NOT_CONVEX = (1, 3, 4)
 HELD_ABOVE = 0.05
 """Multiplier above which such a limit counts as holding the optimum."""
 
-CONVERGED = 1e-4
-"""Barrier weight under which an iteration counts as finished."""
+FIRST_DROP = 7
+DROP_SHARE = 0.12
+"""Converged stances are dropped from this step on, whenever they make up this share."""
+
+CONVERGED = 1e-5
+"""Barrier weight under which an iteration counts as finished (the reach is then within a tenth of
+a millimetre of its optimum)."""
 
 
 @dataclass(frozen=True)
@@ -157,16 +165,15 @@ class _State:
     active: list[NDArray[np.bool_]]
 
 
-def _evaluate(
-    linkage: Linkage, batch: StanceBatch, turn: Array, shift: Array, spare: Array
-) -> _State:
+def _evaluate(linkage: Linkage, run: _Run, layout: PointLayout) -> _State:
+    batch, turn, shift = run.batch, run.turn, run.shift
     geometry = limb_geometry(linkage, batch, turn, shift)
     joints = joint_limits(linkage, geometry)
-    points = point_limits(linkage, batch, turn, shift, spare)
+    points = point_limits(linkage, batch, turn, shift, run.spare, layout)
     everywhere = np.ones(batch.size, dtype=bool)
     feet = batch.engaged[2:]
     value = [
-        batch.reach - spare - geometry.distance,
+        batch.reach - run.spare - geometry.distance,
         geometry.distance - linkage.fold[:, None],
         joints.height, joints.across, joints.lift, joints.out,
         *(limit.value for limit in points),
@@ -176,49 +183,98 @@ def _evaluate(
     return _State(geometry, joints, points, value, active)
 
 
+@dataclass
+class _Run:
+    """The iterates of the stances of a chunk that are still being worked on."""
+
+    batch: StanceBatch
+    index: Ints
+    turn: Array
+    shift: Array
+    spare: Array
+    target: Array
+    slacks: list[Array]
+    multipliers: list[Array]
+
+    def keep(self, alive: NDArray[np.bool_]) -> None:
+        """Drop the stances that are done."""
+        self.batch = self.batch.take(alive)
+        for name in ("index", "turn", "shift", "spare", "target"):
+            setattr(self, name, np.ascontiguousarray(getattr(self, name)[..., alive]))
+        self.slacks = [np.ascontiguousarray(s[..., alive]) for s in self.slacks]
+        self.multipliers = [np.ascontiguousarray(m[..., alive]) for m in self.multipliers]
+
+
 def _descend(
     linkage: Linkage, batch: StanceBatch, turn: Array, shift: Array, steps: int
 ) -> tuple[Postures, NDArray[np.bool_]]:
-    """Interior-point steps from one start for all stances of a chunk, and which of them ended."""
+    """Interior-point steps from one start for all stances of a chunk.
+
+    Stances leave the arrays as they converge. Also returns which of them are beyond doubt:
+    converged, and not held by a limit whose allowed region is not convex.
+    """
+    layout = point_layout(batch)
     spare = slack(linkage, batch, turn, shift)[0] - 0.05
-    target = np.full(batch.size, 0.02)
-    slacks: list[Array] = []
-    multipliers: list[Array] = []
-    state = _evaluate(linkage, batch, turn, shift, spare)
-    for _ in range(steps):
-        if not slacks:
-            slacks = [np.maximum(value, 0.03) for value in state.value]
-            multipliers = [np.where(active, 0.02 / s, 0.0)
-                           for s, active in zip(slacks, state.active, strict=True)]
-        else:
-            # A limit that holds takes its own value as slack, so that only limits still missed
-            # are approached from outside.
-            slacks = [np.where(value > 0.0, np.maximum(value, 0.1 * s), s)
-                      for s, value in zip(slacks, state.value, strict=True)]
-        step = _newton(batch, state, slacks, multipliers, target)
-        length, dual, target = _advance(state, step, slacks, multipliers, target)
-        turn = turned(turn, step[:3] * length)
-        move = step[3:6] * length
-        shift = shift + np.stack(
-            [turn[i, 0] * move[0] + turn[i, 1] * move[1] + turn[i, 2] * move[2] for i in range(3)]
-        )
-        spare = spare + length * step[6]
-        state = _evaluate(linkage, batch, turn, shift, spare)
-    reached, hard = slack(linkage, batch, turn, shift)
-    margin = np.where(hard >= -HARD_TOLERANCE, reached, np.minimum(reached, hard))
-    # Folds, lifts, crossing, tilt and turn bound regions that are not convex: where one of them
-    # holds the optimum, another start may find a better one.
-    held = np.zeros(batch.size, dtype=bool)
+    end = Postures(np.zeros(batch.size), turn.copy(), shift.copy())
+    certain = np.zeros(batch.size, dtype=bool)
+    run = _Run(batch, np.arange(batch.size), turn, shift, spare, np.full(batch.size, 0.02), [], [])
+    state = _evaluate(linkage, run, layout)
+    run.slacks = [np.maximum(value, 0.03) for value in state.value]
+    run.multipliers = [np.where(active, 0.02 / s, 0.0)
+                       for s, active in zip(run.slacks, state.active, strict=True)]
     directions = [k for k, limit in enumerate(state.points, start=6) if not limit.shifts]
-    for k in (*NOT_CONVEX, *directions):
-        held |= _sum(multipliers[k]) > HELD_ABOVE
-    return Postures(margin, turn, shift), (target < CONVERGED) & ~held
+    for iteration in range(1, steps + 1):
+        _step(run, state)
+        state = _evaluate(linkage, run, layout)
+        done = (run.target < CONVERGED) & (_least(state) > -HARD_TOLERANCE)
+        last = iteration == steps
+        if last or (iteration >= FIRST_DROP and done.mean() > DROP_SHARE):
+            held = np.zeros(len(done), dtype=bool)
+            for k in (*NOT_CONVEX, *directions):
+                held |= _sum(run.multipliers[k]) > HELD_ABOVE
+            gone = np.ones(len(done), dtype=bool) if last else done
+            where = run.index[gone]
+            end.turn[..., where], end.shift[:, where] = run.turn[..., gone], run.shift[:, gone]
+            certain[where] = (done & ~held)[gone]
+            if gone.all():
+                break
+            run.keep(~gone)
+            state = _evaluate(linkage, run, layout)
+        # A limit that holds takes its own value as slack, so that only limits still missed
+        # are approached from outside.
+        run.slacks = [np.where(value > 0.0, np.maximum(value, 0.1 * s), s)
+                      for s, value in zip(run.slacks, state.value, strict=True)]
+    reached, hard = slack(linkage, batch, end.turn, end.shift)
+    margin = np.where(hard >= -HARD_TOLERANCE, reached, np.minimum(reached, hard))
+    return Postures(margin, end.turn, end.shift), certain
+
+
+def _least(state: _State) -> Array:
+    """The value of the limit that is missed most, (N,)."""
+    least = np.full(state.value[-1].shape, np.inf)
+    for value, active in zip(state.value, state.active, strict=True):
+        own = np.where(active, value, np.inf)
+        least = np.minimum(least, own if own.ndim == 1 else own.min(axis=0))
+    return least
+
+
+def _step(run: _Run, state: _State) -> None:
+    """One Newton step of all iterates, as long as slacks and multipliers stay positive."""
+    step = _newton(run.batch, state, run.slacks, run.multipliers, run.target)
+    length, run.target = _advance(state, step, run.slacks, run.multipliers, run.target)
+    run.turn = turned(run.turn, step[:3] * length)
+    move = step[3:6] * length
+    turn = run.turn
+    run.shift = run.shift + np.stack(
+        [turn[i, 0] * move[0] + turn[i, 1] * move[1] + turn[i, 2] * move[2] for i in range(3)]
+    )
+    run.spare = run.spare + length * step[6]
 
 
 def _advance(
     state: _State, step: Array, slacks: list[Array], multipliers: list[Array], target: Array
-) -> tuple[Array, Array, Array]:
-    """Move slacks and multipliers in place; return both step lengths and the next target."""
+) -> tuple[Array, Array]:
+    """Move slacks and multipliers in place; return the step length and the next target."""
     length = np.minimum(1.0, 0.4 / np.maximum(_norm(step[:3]), 1e-12))
     length = np.minimum(length, 0.4 / np.maximum(_norm(step[3:6]), 1e-12))
     dual = np.ones_like(length)
@@ -227,21 +283,20 @@ def _advance(
     for value, active, s, m, change in zip(
         state.value, state.active, slacks, multipliers, changes, strict=True
     ):
-        ds = change + value - s
+        ds = np.where(active, change + value - s, 0.0)
         dm = np.where(active, (target - m * ds) / s - m, 0.0)
-        length = np.minimum(length, _to_boundary(s, ds, active))
-        dual = np.minimum(dual, _to_boundary(m, dm, active))
+        length = np.minimum(length, _to_boundary(s, ds))
+        dual = np.minimum(dual, _to_boundary(m, dm))
         slack_steps.append(ds)
         multiplier_steps.append(dm)
     total, number = np.zeros_like(length), np.zeros_like(length)
     for k, active in enumerate(state.active):
-        moved = np.maximum(slacks[k] + length * slack_steps[k], 1e-10)
-        slacks[k] = np.where(active, moved, 1.0)
-        multipliers[k] = np.where(active, multipliers[k] + dual * multiplier_steps[k], 0.0)
+        slacks[k] = np.maximum(slacks[k] + length * slack_steps[k], 1e-10)
+        multipliers[k] = multipliers[k] + dual * multiplier_steps[k]
         total += _sum(slacks[k] * multipliers[k])
-        number += _sum(active.astype(float))
+        number += _sum(active)
     centring = np.where(np.minimum(length, dual) > 0.7, 0.12, 0.4)
-    return length, dual, np.maximum(centring * total / number, 1e-9)
+    return length, np.maximum(centring * total / number, 1e-9)
 
 
 def _norm(vector: Array) -> Array:
@@ -252,10 +307,10 @@ def _sum(values: Array) -> Array:
     return values if values.ndim == 1 else np.asarray(values.sum(axis=0))
 
 
-def _to_boundary(value: Array, change: Array, active: NDArray[np.bool_]) -> Array:
-    """Longest step that keeps ``value`` positive, with a little to spare."""
-    shrinks = active & (change < 0.0)
-    ratio = np.where(shrinks, 0.99 * value / np.where(shrinks, -change, 1.0), 1.0)
+def _to_boundary(value: Array, change: Array) -> Array:
+    """Longest step that keeps ``value`` positive, with a little to spare; 0 change is no bound."""
+    ratio = 0.99 * value / np.maximum(-change, 1e-12)
+    ratio = np.where(change < 0.0, ratio, 1.0)
     return ratio if ratio.ndim == 1 else np.asarray(ratio.min(axis=0))
 
 
