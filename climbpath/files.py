@@ -39,13 +39,20 @@ def read_text(path: str | os.PathLike[str], max_bytes: int = MAX_BYTES) -> str:
 def write_atomically(path: str | os.PathLike[str], content: bytes | str) -> None:
     """Write to a temporary name in the same folder, then move into place.
 
-    Text is written as UTF-8 with plain newlines. DataError if the place cannot be written.
+    A link is followed, and what is neither file nor folder (a device, a pipe) is written to as it
+    is: neither is replaced. Text is written as UTF-8 with plain newlines. DataError if the place
+    cannot be written.
     """
-    target = Path(path)
+    target = Path(os.path.realpath(path))
     data = content.encode("utf-8") if isinstance(content, str) else content
     temporary: str | None = None
     try:
-        handle, temporary = tempfile.mkstemp(prefix=f".{target.name}.", dir=target.parent)
+        if os.path.exists(path) and not (os.path.isfile(path) or os.path.isdir(path)):
+            with open(path, "wb") as stream:
+                stream.write(data)
+            return
+        # A short prefix: with the whole name the temporary one could be too long.
+        handle, temporary = tempfile.mkstemp(prefix=f".{target.name[:20]}.", dir=target.parent)
         with os.fdopen(handle, "wb") as stream:
             stream.write(data)
         # mkstemp makes the file private; give it the permissions any new file would have.
@@ -56,7 +63,8 @@ def write_atomically(path: str | os.PathLike[str], content: bytes | str) -> None
         temporary = None
     except OSError as error:
         reason = error.strerror or str(error)
-        raise DataError([Problem(str(target), "", reason, "a place that can be written")]) from error
+        name = os.fspath(path)
+        raise DataError([Problem(name, "", reason, "a place that can be written")]) from error
     finally:
         if temporary is not None and os.path.exists(temporary):
             os.unlink(temporary)

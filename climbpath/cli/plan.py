@@ -2,7 +2,6 @@
 
 from __future__ import annotations
 
-import math
 import os
 from typing import TYPE_CHECKING, Any
 
@@ -19,6 +18,8 @@ if TYPE_CHECKING:
     from climbpath.wall import Wall
 
 AIMS = ("time", "straight", "both", "narrow")
+MAX_LINE_WEIGHT = 10_000.0
+"""Largest line weight: costs stay exact, and time has long ceased to count."""
 BODY_KEYS = ("athlete_file", "sex", "stature_mm", "mass_kg", "span_mm", "sitting_height_mm")
 
 
@@ -105,8 +106,9 @@ def _check_options(options: dict[str, Any], json_target: str | None, out: str | 
     wrong = []
     weight = options["line_weight"]
     if weight is not None:
-        if not math.isfinite(weight) or weight < 0.0:
-            wrong.append(f"--line-weight: expected a number of 0 or more, found {weight:g}")
+        if not 0.0 <= weight <= MAX_LINE_WEIGHT:
+            bounds = f"0 to {MAX_LINE_WEIGHT:g}"
+            wrong.append(f"--line-weight: expected a number from {bounds}, found {weight:g}")
         if options["favour"] != "both":
             wrong.append(f"--line-weight needs --favour both, found {options['favour']}")
     for text in options["hand"]:

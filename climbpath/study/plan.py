@@ -22,6 +22,7 @@ from climbpath.study.cautions import FALSE_START_CAUTION, cautions_for
 from climbpath.study.climb import LATTICE_STEP, Climb, Conditions, Progress, prepare
 from climbpath.study.decode import plan_of
 from climbpath.study.results import Plan, PlanResult
+from climbpath.study.why_not import why_not
 from climbpath.wall import Wall
 
 Ints = NDArray[np.int64]
@@ -179,9 +180,7 @@ def plan(
         plans = _with_lattice_error(wall, athlete, asked, motion, plans)
     why = None
     if not plans:
-        from climbpath.study.why_not import why_not
-
-        why = why_not(wall, athlete, asked, motion)
+        why = why_not(wall, athlete, asked.conditions, motion, asked.step)
     notes = [growth_caution(athlete, this_year) or "" if this_year is not None else "",
              *athlete.cautions]
     if any(p.pad_off_s is not None and p.pad_off_s < FALSE_START for p in plans):
