@@ -16,6 +16,7 @@ from climbpath.route.alternatives import alternatives
 from climbpath.route.bottleneck import bottleneck_route
 from climbpath.route.demands import with_demands
 from climbpath.route.graph import RouteGraph
+from climbpath.route.recost import Recoster
 from climbpath.route.shortest import Route, Sources, shortest_route
 from climbpath.route.weights import line_weight_steps, supported_trade_offs, weighted
 from climbpath.study.cautions import FALSE_START_CAUTION, cautions_for
@@ -171,8 +172,12 @@ def plan(
     if not 1 <= asked.alternatives <= 20:
         raise UsageError(f"alternatives: 1 to 20, found {asked.alternatives}")
     climb = prepare(wall, athlete, asked.conditions, motion, asked.step, progress=progress)
+    routes = plan_routes(climb, asked)
+    recoster = Recoster(climb.options, climb.search, climb.motion, wall.line_x)
+    for best in routes:
+        recoster.check(best.route)
     plans = tuple(plan_of(climb, best.route, rank)
-                  for rank, best in enumerate(plan_routes(climb, asked), start=1))
+                  for rank, best in enumerate(routes, start=1))
     trade_off: tuple[tuple[float, float, float], ...] = ()
     if plans and asked.trade_off:
         trade_off = trade_off_points(climb, asked)

@@ -1,8 +1,7 @@
-"""A careful solver of one stance, and a check of postures from their joints alone.
+"""A careful solver of one stance, one at a time.
 
-Both are written from the definitions, in world axes and from the athlete's lengths and ranges;
-neither calls the package's limits. The solver uses Euler angles and sequential quadratic
-programming from several starts. The check looks at nothing but joint positions.
+It is written from the definitions, in world axes, and calls nothing of the package's own limits:
+Euler angles and sequential quadratic programming from several starts.
 """
 
 from __future__ import annotations
@@ -14,8 +13,8 @@ import numpy as np
 from numpy.typing import NDArray
 from scipy.optimize import minimize
 
-from climbpath.body import Athlete
 from climbpath.contacts import FLOOR, FREE
+from climbpath.posture.linkage import Linkage
 from climbpath.wall import Surface
 
 Array = NDArray[np.float64]
@@ -27,13 +26,13 @@ GRIP = 0.5
 SIDE = np.array([-1.0, 1.0, -1.0, 1.0])
 
 
-def _third_side(a: float, b: float, angle: float) -> float:
-    return float(np.sqrt(a * a + b * b - 2.0 * a * b * np.cos(angle)))
-
-
 @dataclass(frozen=True)
 class Body:
-    """What the solver needs of an athlete: lengths in m, angles in rad."""
+    """What the solver needs of a body, m: tests of the linkage check these against the athlete.
+
+    ``strike`` and ``strike_fold``: what the fingertip adds to the longest reach of an arm, and
+    its shortest reach.
+    """
 
     roots: Array
     rise: float
@@ -41,46 +40,37 @@ class Body:
     reach: Array
     fold: Array
     stand: float
-    thigh: float
+    knee: Array
     lower: float
-    flexion: float
     sideways: float
     across: Array
     chest: float
     space: tuple[float, float]
     strike: float
+    strike_fold: float
 
     @classmethod
-    def of(cls, athlete: Athlete) -> Body:
-        """From the athlete's lengths and ranges."""
-        length, limit = athlete.length, athlete.ranges
-        fore = length("forearm") + GRIP * length("hand")
-        toe, shank, thigh = (length(n) for n in ("ankle_to_toe", "shank", "thigh"))
-        # The sole at right angles to the shank; the line to the toe slants down to it.
-        rest = np.pi / 2 + np.arcsin(min(length("ankle_height") / toe, 1.0))
-        lower = _third_side(shank, toe, rest)
-        longest = _third_side(shank, toe, min(rest + limit["ankle_plantarflexion"], np.pi))
-        arm, leg = length("upper_arm") + fore, thigh + longest
-        arm_fold = _third_side(length("upper_arm"), fore, np.pi - limit["elbow_flexion"])
-        leg_fold = _third_side(thigh, lower, np.pi - limit["knee_flexion"])
-        shoulder, hip = length("shoulder_half_width"), length("hip_half_width")
-        trunk = length("trunk")
+    def of(cls, linkage: Linkage) -> Body:
+        """From the linkage's lengths."""
+        upper, grip = linkage.upper_arm, linkage.forearm + GRIP * linkage.hand
+        tip = linkage.forearm + linkage.hand
+        # The elbow's cosine at full flexion, from the gripping arm (law of cosines).
+        elbow = (upper**2 + grip**2 - linkage.fold[0] ** 2) / (2.0 * upper * grip)
         return cls(
-            roots=np.array([[-shoulder, trunk, 0.0], [shoulder, trunk, 0.0],
-                            [-hip, 0.0, 0.0], [hip, 0.0, 0.0]]),
-            rise=length("shoulder_rise"),
-            trunk=trunk,
-            reach=np.array([arm, arm, leg, leg]),
-            fold=np.array([arm_fold, arm_fold, leg_fold, leg_fold]),
-            stand=athlete.hip_height,
-            thigh=thigh,
-            lower=lower,
-            flexion=limit["hip_flexion"],
-            sideways=leg * float(np.sin(limit["hip_abduction"])),
-            across=np.sin([ARM_ACROSS, ARM_ACROSS, limit["hip_adduction"], limit["hip_adduction"]]),
-            chest=0.75 * trunk,
-            space=(length("pelvis_depth") / 2, length("chest_depth") / 2),
-            strike=(1.0 - GRIP) * length("hand"),
+            roots=linkage.roots,
+            rise=linkage.shoulder_rise,
+            trunk=float(linkage.roots[0, 1]),
+            reach=linkage.reach,
+            fold=linkage.fold,
+            stand=linkage.thigh + linkage.shank + linkage.ankle_height,
+            knee=linkage.knee_limit,
+            lower=linkage.lower_leg[1],
+            sideways=linkage.out_limit,
+            across=linkage.across,
+            chest=linkage.chest_height,
+            space=(linkage.pelvis_space, linkage.chest_space),
+            strike=tip - grip,
+            strike_fold=float(np.sqrt(upper**2 + tip**2 - 2.0 * upper * tip * elbow)),
         )
 
 
@@ -128,7 +118,7 @@ class Stance:
                 away[1] -= min(max(away[1], 0.0), body.rise)
             far = float(np.sqrt(away @ away))
             spare.append(body.reach[limb] + (body.strike if self.strike[limb] else 0.0) - far)
-            hard.append(far - body.fold[limb])
+            hard.append(far - (body.strike_fold if self.strike[limb] else body.fold[limb]))
             hard.append(body.across[limb] * far + SIDE[limb] * away[0])
             if limb < 2:
                 hard.append(seen[1])
@@ -138,9 +128,7 @@ class Stance:
             # With the thigh at full flexion in the plane of hip, toe and trunk, the lower leg
             # must still come down to the toe.
             level = np.hypot(away[0], away[2])
-            down = body.flexion
-            knee = body.thigh * np.array([np.sin(down), -np.cos(down)])
-            hard.append(np.hypot(level - knee[0], away[1] - knee[1]) - body.lower)
+            hard.append(np.hypot(level - body.knee[0], away[1] - body.knee[1]) - body.lower)
         normal = surface.normal[0]
         out = float(normal @ (place - surface.origin[0]))
         hard.append(out - body.space[0])
@@ -153,8 +141,7 @@ class Stance:
         """Unknowns (6,): hanging under the hands, standing on the feet, then randomised."""
         rng = np.random.default_rng(seed)
         body, surface = self.body, self.surface
-        touching = self.contacts >= -1
-        touching &= self.contacts != FREE
+        touching = (self.contacts != FREE) & (self.contacts != FLOOR)
         hands, feet = touching[:2], touching[2:]
         middle = self.points[touching].mean(axis=0) if touching.any() else np.zeros(3)
         hang = body.trunk + 0.7 * body.reach[0]
