@@ -54,9 +54,6 @@ RETRY_BELOW = (0.03, 0.01)
 """Stances whose margin so far is under this (m) are solved from the next start too: a fold or a
 joint range can hold a start in a local optimum, and near zero that decides."""
 
-NOT_CONVEX = (1, 3, 4)
-"""Groups of limits whose allowed regions are not convex: fold, across and lift."""
-
 HELD_ABOVE = 0.05
 """Multiplier above which such a limit counts as holding the optimum."""
 
@@ -149,43 +146,36 @@ def _mean_x(batch: StanceBatch, limbs: slice, otherwise: Array) -> Array:
     return np.where(total > 0, mean, otherwise)
 
 
+REACH, FOLD, HEIGHT, ACROSS = (slice(4 * k, 4 * k + 4) for k in range(4))
+LIFT, OUT = slice(16, 18), slice(18, 20)
+POINTS = 20
+"""Rows of the arrays of limits: four for each kind of all limbs, two for each of the legs, then
+one for each limit of a trunk point or floor foot."""
+
+NOT_CONVEX = (*range(4, 8), *range(12, 18))
+"""Rows of limits whose allowed regions are not convex: fold, across and lift."""
+
+
 @dataclass(frozen=True)
 class _State:
-    """Where a chunk stands: geometry and every limit, evaluated once a step.
+    """Where the iterates stand: geometry and every limit, evaluated once a step.
 
-    ``value`` and ``active`` list the limits in groups: reach, fold, height and across of all limbs
-    ((4, N) each), lift and out of the legs ((2, N)), then those of trunk points and floor feet
-    ((N,) each).
+    ``value`` (M, N): the limits in the order of the rows above.
     """
 
     geometry: LimbGeometry
     joints: JointLimits
     points: list[PointLimit]
-    value: list[Array]
-    active: list[NDArray[np.bool_]]
-
-
-def _evaluate(linkage: Linkage, run: _Run, layout: PointLayout) -> _State:
-    batch, turn, shift = run.batch, run.turn, run.shift
-    geometry = limb_geometry(linkage, batch, turn, shift)
-    joints = joint_limits(linkage, geometry)
-    points = point_limits(linkage, batch, turn, shift, run.spare, layout)
-    everywhere = np.ones(batch.size, dtype=bool)
-    feet = batch.engaged[2:]
-    value = [
-        batch.reach - run.spare - geometry.distance,
-        geometry.distance - linkage.fold[:, None],
-        joints.height, joints.across, joints.lift, joints.out,
-        *(limit.value for limit in points),
-    ]
-    active = [*(4 * [batch.engaged]), feet, feet]
-    active += [everywhere if limit.active is None else limit.active for limit in points]
-    return _State(geometry, joints, points, value, active)
+    value: Array
 
 
 @dataclass
 class _Run:
-    """The iterates of the stances of a chunk that are still being worked on."""
+    """The iterates of the stances of a chunk that are still being worked on.
+
+    ``active``, ``slacks``, ``multipliers``: (M, N), rows as above; limits that a stance does not
+    have keep slack 1 and multiplier 0.
+    """
 
     batch: StanceBatch
     index: Ints
@@ -193,16 +183,41 @@ class _Run:
     shift: Array
     spare: Array
     target: Array
-    slacks: list[Array]
-    multipliers: list[Array]
+    active: NDArray[np.bool_]
+    slacks: Array
+    multipliers: Array
 
-    def keep(self, alive: NDArray[np.bool_]) -> None:
+    def keep(self, alive: Ints) -> None:
         """Drop the stances that are done."""
         self.batch = self.batch.take(alive)
-        for name in ("index", "turn", "shift", "spare", "target"):
+        for name in ("index", "turn", "shift", "spare", "target", "active", "slacks",
+                     "multipliers"):
             setattr(self, name, np.ascontiguousarray(getattr(self, name)[..., alive]))
-        self.slacks = [np.ascontiguousarray(s[..., alive]) for s in self.slacks]
-        self.multipliers = [np.ascontiguousarray(m[..., alive]) for m in self.multipliers]
+
+
+def _evaluate(linkage: Linkage, run: _Run, layout: PointLayout) -> _State:
+    geometry = limb_geometry(linkage, run.batch, run.turn, run.shift)
+    joints = joint_limits(linkage, geometry)
+    points = point_limits(linkage, run.batch, run.turn, run.shift, run.spare, layout)
+    value = np.empty((POINTS + len(points), run.batch.size))
+    np.subtract(run.batch.reach - run.spare, geometry.distance, out=value[REACH])
+    np.subtract(geometry.distance, linkage.fold[:, None], out=value[FOLD])
+    value[HEIGHT], value[ACROSS] = joints.height, joints.across
+    value[LIFT], value[OUT] = joints.lift, joints.out
+    for row, limit in enumerate(points, start=POINTS):
+        value[row] = limit.value
+    return _State(geometry, joints, points, value)
+
+
+def _active(batch: StanceBatch, layout: PointLayout, points: list[PointLimit]
+            ) -> NDArray[np.bool_]:
+    """Which limits each stance has, (M, N)."""
+    feet = batch.engaged[2:]
+    rows = [*(4 * [batch.engaged]), feet, feet]
+    for limit in points:
+        everywhere = np.ones((1, batch.size), dtype=bool)
+        rows.append(everywhere if limit.active is None else limit.active[None, :])
+    return np.concatenate(rows)
 
 
 def _descend(
@@ -217,174 +232,136 @@ def _descend(
     spare = slack(linkage, batch, turn, shift)[0] - 0.05
     end = Postures(np.zeros(batch.size), turn.copy(), shift.copy())
     certain = np.zeros(batch.size, dtype=bool)
-    run = _Run(batch, np.arange(batch.size), turn, shift, spare, np.full(batch.size, 0.02), [], [])
+    none = np.zeros((0, batch.size))
+    run = _Run(batch, np.arange(batch.size), turn, shift, spare, np.full(batch.size, 0.02),
+               none.astype(bool), none, none)
     state = _evaluate(linkage, run, layout)
-    run.slacks = [np.maximum(value, 0.03) for value in state.value]
-    run.multipliers = [np.where(active, 0.02 / s, 0.0)
-                       for s, active in zip(run.slacks, state.active, strict=True)]
-    directions = [k for k, limit in enumerate(state.points, start=6) if not limit.shifts]
+    run.active = _active(batch, layout, state.points)
+    run.slacks = np.where(run.active, np.maximum(state.value, 0.03), 1.0)
+    run.multipliers = np.where(run.active, 0.02 / run.slacks, 0.0)
+    doubtful = [*NOT_CONVEX, *(row for row, limit in enumerate(state.points, start=POINTS)
+                               if not limit.shifts)]
     for iteration in range(1, steps + 1):
         _step(run, state)
         state = _evaluate(linkage, run, layout)
-        done = (run.target < CONVERGED) & (_least(state) > -HARD_TOLERANCE)
+        least = np.where(run.active, state.value, np.inf).min(axis=0)
+        done = (run.target < CONVERGED) & (least > -HARD_TOLERANCE)
         last = iteration == steps
         if last or (iteration >= FIRST_DROP and done.mean() > DROP_SHARE):
-            held = np.zeros(len(done), dtype=bool)
-            for k in (*NOT_CONVEX, *directions):
-                held |= _sum(run.multipliers[k]) > HELD_ABOVE
+            held = (run.multipliers[doubtful] > HELD_ABOVE).any(axis=0)
             gone = np.ones(len(done), dtype=bool) if last else done
             where = run.index[gone]
             end.turn[..., where], end.shift[:, where] = run.turn[..., gone], run.shift[:, gone]
             certain[where] = (done & ~held)[gone]
             if gone.all():
                 break
-            run.keep(~gone)
+            run.keep(np.flatnonzero(~gone))
             state = _evaluate(linkage, run, layout)
         # A limit that holds takes its own value as slack, so that only limits still missed
         # are approached from outside.
-        run.slacks = [np.where(value > 0.0, np.maximum(value, 0.1 * s), s)
-                      for s, value in zip(run.slacks, state.value, strict=True)]
+        own = np.where(run.active & (state.value > 0.0), state.value, 0.0)
+        run.slacks = np.where(own > 0.0, np.maximum(own, 0.1 * run.slacks), run.slacks)
     reached, hard = slack(linkage, batch, end.turn, end.shift)
     margin = np.where(hard >= -HARD_TOLERANCE, reached, np.minimum(reached, hard))
     return Postures(margin, end.turn, end.shift), certain
 
 
-def _least(state: _State) -> Array:
-    """The value of the limit that is missed most, (N,)."""
-    least = np.full(state.value[-1].shape, np.inf)
-    for value, active in zip(state.value, state.active, strict=True):
-        own = np.where(active, value, np.inf)
-        least = np.minimum(least, own if own.ndim == 1 else own.min(axis=0))
-    return least
-
-
 def _step(run: _Run, state: _State) -> None:
     """One Newton step of all iterates, as long as slacks and multipliers stay positive."""
-    step = _newton(run.batch, state, run.slacks, run.multipliers, run.target)
-    length, run.target = _advance(state, step, run.slacks, run.multipliers, run.target)
+    step = _newton(run, state)
+    slacks, multipliers = run.slacks, run.multipliers
+    slack_step = np.where(run.active, _linear_change(state, step) + state.value - slacks, 0.0)
+    dual_step = np.where(run.active, (run.target - multipliers * slack_step) / slacks, 0.0)
+    dual_step -= multipliers
+    length = np.minimum(_to_boundary(slacks, slack_step), 0.4 / np.maximum(_norm(step[:3]), 0.4))
+    length = np.minimum(length, 0.4 / np.maximum(_norm(step[3:6]), 0.4))
+    dual = _to_boundary(np.maximum(multipliers, 1e-300), dual_step)
+    run.slacks = np.maximum(slacks + length * slack_step, 1e-10)
+    run.multipliers = multipliers + dual * dual_step
+    total = (run.slacks * run.multipliers).sum(axis=0)
+    centring = np.where(np.minimum(length, dual) > 0.7, 0.12, 0.4)
+    run.target = np.maximum(centring * total / run.active.sum(axis=0), 1e-9)
     run.turn = turned(run.turn, step[:3] * length)
-    move = step[3:6] * length
-    turn = run.turn
+    turn, move = run.turn, step[3:6] * length
     run.shift = run.shift + np.stack(
         [turn[i, 0] * move[0] + turn[i, 1] * move[1] + turn[i, 2] * move[2] for i in range(3)]
     )
     run.spare = run.spare + length * step[6]
 
 
-def _advance(
-    state: _State, step: Array, slacks: list[Array], multipliers: list[Array], target: Array
-) -> tuple[Array, Array]:
-    """Move slacks and multipliers in place; return the step length and the next target."""
-    length = np.minimum(1.0, 0.4 / np.maximum(_norm(step[:3]), 1e-12))
-    length = np.minimum(length, 0.4 / np.maximum(_norm(step[3:6]), 1e-12))
-    dual = np.ones_like(length)
-    slack_steps, multiplier_steps = [], []
-    changes = _linear_change(state, step)
-    for value, active, s, m, change in zip(
-        state.value, state.active, slacks, multipliers, changes, strict=True
-    ):
-        ds = np.where(active, change + value - s, 0.0)
-        dm = np.where(active, (target - m * ds) / s - m, 0.0)
-        length = np.minimum(length, _to_boundary(s, ds))
-        dual = np.minimum(dual, _to_boundary(m, dm))
-        slack_steps.append(ds)
-        multiplier_steps.append(dm)
-    total, number = np.zeros_like(length), np.zeros_like(length)
-    for k, active in enumerate(state.active):
-        slacks[k] = np.maximum(slacks[k] + length * slack_steps[k], 1e-10)
-        multipliers[k] = multipliers[k] + dual * multiplier_steps[k]
-        total += _sum(slacks[k] * multipliers[k])
-        number += _sum(active)
-    centring = np.where(np.minimum(length, dual) > 0.7, 0.12, 0.4)
-    return length, np.maximum(centring * total / number, 1e-9)
-
-
 def _norm(vector: Array) -> Array:
     return np.asarray(np.sqrt((vector**2).sum(axis=0)))
 
 
-def _sum(values: Array) -> Array:
-    return values if values.ndim == 1 else np.asarray(values.sum(axis=0))
-
-
 def _to_boundary(value: Array, change: Array) -> Array:
-    """Longest step that keeps ``value`` positive, with a little to spare; 0 change is no bound."""
-    ratio = 0.99 * value / np.maximum(-change, 1e-12)
-    ratio = np.where(change < 0.0, ratio, 1.0)
-    return ratio if ratio.ndim == 1 else np.asarray(ratio.min(axis=0))
+    """Longest step, at most 1, that keeps all of ``value`` (M, N) positive, with some to spare."""
+    fastest = (-change / value).max(axis=0)
+    return np.asarray(0.99 / np.maximum(fastest, 0.99))
 
 
-def _newton(
-    batch: StanceBatch, state: _State, slacks: list[Array], multipliers: list[Array], target: Array
-) -> Array:
+def _newton(run: _Run, state: _State) -> Array:
     """One Newton step (7, N): turn, shift, spare reach."""
+    target = run.target
     system = System(
-        batch.size,
+        run.batch.size,
         (DAMPING[0] + DAMPING_PER_TARGET[0] * target, DAMPING[1] + DAMPING_PER_TARGET[1] * target),
     )
-    weights, rights = [], []
-    for value, active, s, m in zip(state.value, state.active, slacks, multipliers, strict=True):
-        weight = np.where(active, m / s, 0.0)
-        weights.append(weight)
-        rights.append(np.where(active, m + target / s - weight * value, 0.0))
+    m = run.multipliers
+    weight = m / run.slacks
+    right = np.where(run.active, m + target / run.slacks - weight * state.value, 0.0)
     u = state.geometry.along
     joints, cross = state.joints, state.joints.across_slope
     # Reach limits have slope -u, folds +u; both bend like the distance, (1 - u u^T) / d, and so
     # does the share of it in the limit on crossing.
     sine = cross[0] * u[0] + cross[1] * u[1] + cross[2] * u[2] - LIMB_SIDE[:, None] * u[0]
-    bend = (multipliers[0] - multipliers[1] - sine * multipliers[3]) / state.geometry.distance
-    along = weights[0] + weights[1] - bend
-    inner = [along * u[i] * u[j] + weights[3] * cross[i] * cross[j] + (bend if i == j else 0.0)
-             for i, j in UPPER]
+    bend = (m[REACH] - m[FOLD] - sine * m[ACROSS]) / state.geometry.distance
+    along = weight[REACH] + weight[FOLD] - bend
+    inner = [along * u[i] * u[j] + weight[ACROSS] * cross[i] * cross[j]
+             + (bend if i == j else 0.0) for i, j in UPPER]
     # While the shoulder lifts with the hand, distance does not change along the trunk.
     inner[3] = np.where(state.geometry.rising, inner[3] - bend, inner[3])
-    inner[3] = inner[3] + weights[2]
-    pull = (rights[1] - rights[0]) * u + rights[3] * cross
-    curve = (multipliers[1] - multipliers[0]) * u + multipliers[3] * cross
-    pull[1] += HEIGHT_SIDE[:, None] * rights[2]
-    curve[1] += HEIGHT_SIDE[:, None] * multipliers[2]
+    inner[3] = inner[3] + weight[HEIGHT]
+    pull = (right[FOLD] - right[REACH]) * u + right[ACROSS] * cross
+    curve = (m[FOLD] - m[REACH]) * u + m[ACROSS] * cross
+    pull[1] += HEIGHT_SIDE[:, None] * right[HEIGHT]
+    curve[1] += HEIGHT_SIDE[:, None] * m[HEIGHT]
     lift = joints.lift_slope
-    pull[:, 2:] += rights[4] * lift
-    curve[:, 2:] += multipliers[4] * lift
+    pull[:, 2:] += right[LIFT] * lift
+    curve[:, 2:] += m[LIFT] * lift
     for slot, (i, j) in enumerate(UPPER):
-        inner[slot][2:] += weights[4] * lift[i] * lift[j]
-        inner[slot][2:] -= multipliers[4] * joints.lift_curve[slot]
+        inner[slot][2:] += weight[LIFT] * lift[i] * lift[j] - m[LIFT] * joints.lift_curve[slot]
     side = LIMB_SIDE[2:, None]
-    pull[0, 2:] -= side * rights[5]
-    curve[0, 2:] -= side * multipliers[5]
-    inner[0][2:] += weights[5]
-    system.add_limbs(state.geometry.point, inner, pull, curve, -weights[0] * u)
-    system.matrix[6][6] += weights[0].sum(axis=0) + 1e-9
-    system.right[6] += 1.0 - rights[0].sum(axis=0)
-    for k, limit in enumerate(state.points, start=6):
-        system.add_plane(limit.normal, limit.offset, weights[k], rights[k], multipliers[k],
+    pull[0, 2:] -= side * right[OUT]
+    curve[0, 2:] -= side * m[OUT]
+    inner[0][2:] += weight[OUT]
+    system.add_limbs(state.geometry.point, inner, pull, curve, -weight[REACH] * u)
+    system.matrix[6][6] += weight[REACH].sum(axis=0) + 1e-9
+    system.right[6] += 1.0 - right[REACH].sum(axis=0)
+    for row, limit in enumerate(state.points, start=POINTS):
+        system.add_plane(limit.normal, limit.offset, weight[row], right[row], m[row],
                          limit.shifts, limit.spare)
     return np.stack(system.solve())
 
 
-def _linear_change(state: _State, step: Array) -> list[Array]:
-    """How every limit changes along ``step`` to first order, in the order of ``_State``."""
+def _linear_change(state: _State, step: Array) -> Array:
+    """How every limit changes along ``step`` to first order, (M, N)."""
     w, u, t = step[:3], step[3:6], step[6]
     v = state.geometry.point
     moved = np.stack([v[(i + 1) % 3] * w[(i + 2) % 3] - v[(i + 2) % 3] * w[(i + 1) % 3] - u[i]
                       for i in range(3)])
-    distance = (state.geometry.along * moved).sum(axis=0)
-    feet = moved[:, 2:]
-    changes = [
-        -distance - t,
-        distance,
-        HEIGHT_SIDE[:, None] * moved[1],
-        (state.joints.across_slope * moved).sum(axis=0),
-        (state.joints.lift_slope * feet).sum(axis=0),
-        -LIMB_SIDE[2:, None] * feet[0],
-    ]
-    for limit in state.points:
+    change = np.empty_like(state.value)
+    change[FOLD] = (state.geometry.along * moved).sum(axis=0)
+    change[REACH] = -change[FOLD] - t
+    change[HEIGHT] = HEIGHT_SIDE[:, None] * moved[1]
+    change[ACROSS] = (state.joints.across_slope * moved).sum(axis=0)
+    change[LIFT] = (state.joints.lift_slope * moved[:, 2:]).sum(axis=0)
+    change[OUT] = -LIMB_SIDE[2:, None] * moved[0, 2:]
+    for row, limit in enumerate(state.points, start=POINTS):
         n, o = limit.normal, limit.offset
         arm = [w[1] * o[2] - w[2] * o[1], w[2] * o[0] - w[0] * o[2], w[0] * o[1] - w[1] * o[0]]
-        change = n[0] * arm[0] + n[1] * arm[1] + n[2] * arm[2]
+        change[row] = n[0] * arm[0] + n[1] * arm[1] + n[2] * arm[2]
         if limit.shifts:
-            change = change + n[0] * u[0] + n[1] * u[1] + n[2] * u[2]
+            change[row] += n[0] * u[0] + n[1] * u[1] + n[2] * u[2]
         if limit.spare:
-            change = change - t
-        changes.append(change)
-    return changes
+            change[row] -= t
+    return change
