@@ -57,7 +57,7 @@ def _flag(key: str) -> str:
 def _ask(values: dict[str, Any]) -> None:
     """Fill in what the options did not give; where nobody can be asked, say what is missing."""
     missing = [key for key in REQUIRED if values.get(key) is None]
-    if not sys.stdin.isatty():
+    if sys.stdin is None or not sys.stdin.isatty():
         if missing:
             raise UsageError(f"missing {', '.join(_flag(key) for key in missing)}")
         return

@@ -7,7 +7,7 @@ from typing import TYPE_CHECKING, Any, TypeVar
 
 import click
 
-from climbpath.errors import UsageError
+from climbpath.errors import DataError, Problem, UsageError
 
 if TYPE_CHECKING:
     from climbpath.body import Athlete
@@ -99,13 +99,16 @@ def quiet_drawing() -> None:
     """Load matplotlib so that nothing on this machine changes a picture or adds a message.
 
     Settings files and MPLBACKEND do not count, and it says nothing about folders that it cannot
-    write to.
+    write to. DataError for a settings file that cannot be read at all.
     """
     import logging
     import os
 
-    logging.getLogger("matplotlib").setLevel(logging.CRITICAL)
+    logging.getLogger("matplotlib").setLevel(logging.CRITICAL + 1)
     os.environ.pop("MPLBACKEND", None)  # a name that it does not know would stop the import
-    import matplotlib as mpl
-
+    try:
+        import matplotlib as mpl
+    except (ValueError, OSError) as error:
+        expected = "settings of matplotlib that can be read, or no such file"
+        raise DataError([Problem("matplotlibrc", "", str(error), expected)]) from error
     mpl.rcdefaults()

@@ -45,6 +45,7 @@ def check(files: tuple[str, ...]) -> None:
 @click.option("--lane", metavar="ID", help="Draw this lane's holds and line alone.")
 def show(file: str, out: str, lane: str | None) -> None:
     """Draw a wall: holds, line, sections, floor and hole grid."""
+    from climbpath.cli.options import quiet_drawing
     from climbpath.errors import UsageError
     from climbpath.figure.save import figure_format, save_figure
     from climbpath.figure.wall import wall_figure
@@ -58,6 +59,7 @@ def show(file: str, out: str, lane: str | None) -> None:
             known = ", ".join(names) or "none"
             raise UsageError(f"{file}: expected a lane of the wall ({known}), found {lane!r}")
         wall = wall.lane_view(lane)
+    quiet_drawing()
     save_figure(wall_figure(wall), out)
     click.echo(f"wrote {out}", err=True)
 

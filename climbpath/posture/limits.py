@@ -44,7 +44,9 @@ def limb_geometry(linkage: Linkage, batch: StanceBatch, turn: Array, shift: Arra
     distance is that from the contact to the segment the joint can slide on, a convex function.
     """
     dx = [batch.target[i] - shift[i] for i in range(3)]
-    point = np.stack([dx[0] * turn[0, j] + dx[1] * turn[1, j] + dx[2] * turn[2, j] for j in range(3)])
+    point = np.stack(
+        [dx[0] * turn[0, j] + dx[1] * turn[1, j] + dx[2] * turn[2, j] for j in range(3)]
+    )
     away = point - linkage.roots.T[:, :, None]
     rise = np.zeros_like(away[1])
     rise[:2] = np.clip(away[1, :2], 0.0, linkage.shoulder_rise)
@@ -243,4 +245,5 @@ def turned(turn: Array, step: Array) -> Array:
 
 def tilted(angle: float) -> Array:
     """Trunk leaning to the right by ``angle`` [rad] in the surface's plane. Shape (3, 3)."""
-    return np.array([[cos(angle), sin(angle), 0.0], [-sin(angle), cos(angle), 0.0], [0.0, 0.0, 1.0]])
+    c, s = cos(angle), sin(angle)
+    return np.array([[c, s, 0.0], [-s, c, 0.0], [0.0, 0.0, 1.0]])

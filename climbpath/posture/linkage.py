@@ -27,8 +27,8 @@ TRUNK_TILT = np.deg2rad(40.0)
 climbing is done upright)."""
 
 ARM_ACROSS = np.deg2rad(25.0)
-"""How far an arm may point across the body, past straight ahead (a choice of the model: crossed arms
-are rare in fast climbing)."""
+"""How far an arm may point across the body, past straight ahead (a choice of the model: crossed
+arms are rare in fast climbing)."""
 
 TRUNK_TURN = np.deg2rad(50.0)
 """Largest angle between the front of the trunk and the surface's inward normal (a choice of the
@@ -102,9 +102,10 @@ def linkage_of(athlete: Athlete) -> Linkage:
     """The linkage of an athlete.
 
     The ankle is taken as a hinge: at rest the sole stands at a right angle to the shank, so that
-    the line ankle to toe, which slants down to the sole, opens a little more; between full dorsiflexion and full plantarflexion the distance knee to toe runs from
-    ``lower_leg[0]`` over ``lower_leg[1]`` (at rest) to ``lower_leg[2]`` (law of cosines). The
-    fold of a limb is its length at the joint's full flexion, likewise.
+    the line ankle to toe, which slants down to the sole, opens a little more. Between full
+    dorsiflexion and full plantarflexion the distance knee to toe runs from ``lower_leg[0]`` over
+    ``lower_leg[1]`` (at rest) to ``lower_leg[2]`` (law of cosines). The fold of a limb is its
+    length at the joint's full flexion, likewise.
     """
     length, limit = athlete.length, athlete.ranges
     toe, shank, thigh = length("ankle_to_toe"), length("shank"), length("thigh")

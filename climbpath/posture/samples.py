@@ -16,13 +16,13 @@ from dataclasses import dataclass
 import numpy as np
 from numpy.typing import NDArray
 
+from climbpath.contacts import Limb
 from climbpath.posture.assembly import FIRST_JOINT, assemble, rest_points
 from climbpath.posture.batch import StanceBatch
 from climbpath.posture.com import com_of, joint_weights
 from climbpath.posture.limits import slack, tilted, upright
 from climbpath.posture.linkage import Linkage
 from climbpath.posture.solver import Postures
-from climbpath.contacts import Limb
 
 Array = NDArray[np.float64]
 Ints = NDArray[np.int64]

@@ -36,7 +36,7 @@ from climbpath.posture.linkage import LIMB_SIDE, Linkage
 Array = NDArray[np.float64]
 Ints = NDArray[np.int64]
 
-CHUNK = 4096
+CHUNK = 1024
 """Stances solved together: arrays of this length stay in the processor's cache."""
 
 STEPS = (20, 26, 30)

@@ -53,7 +53,8 @@ class NodeCode:
 
     def event(self, limb: int, contact: Ints) -> Ints:
         """Number of the landing of ``limb`` on contacts (hold, floor or smear), -1 for free."""
-        place = np.where(contact >= 0, contact, np.where(contact == FLOOR, self.holds, self.holds + 1))
+        bare = np.where(contact == FLOOR, self.holds, self.holds + 1)
+        place = np.where(contact >= 0, contact, bare)
         return np.where(contact == FREE, -1, limb * (self.holds + 2) + place)
 
     def landing(self, event: int) -> tuple[Limb, int]:

@@ -1,7 +1,7 @@
 """Working out a route's times and areas again from what its nodes mean, arc by arc.
 
 Nothing of the graph's arrays is read: each arc's kind follows from the phases of its ends, and
-its cost from the stances, the samples and the motion model. A plan is only shown when the sums agree.
+its cost from the stances, the samples and the motion model. A plan is shown only when both agree.
 """
 
 from __future__ import annotations
@@ -65,7 +65,7 @@ class Recoster:
 
     def _contacts(self, node: int) -> Ints:
         stances = self.search.stances
-        return stances.contacts[stances.sample_stance[self._sample(node)]]
+        return np.asarray(stances.contacts[stances.sample_stance[self._sample(node)]])
 
     def _travel(self, tail: int, head: int, support: Ints, level: bool) -> float:
         com = self.search.stances.com

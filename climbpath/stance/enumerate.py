@@ -26,6 +26,9 @@ from climbpath.stance.options import ContactOptions, contact_points
 Array = NDArray[np.float64]
 Ints = NDArray[np.int64]
 Flags = NDArray[np.bool_]
+Limbs = tuple[Limb, ...]
+Relation = tuple[Flags, Ints, Ints]
+"""Which pairs of contacts go together: a table, and its rows as starts and partners."""
 
 BLOCK = 1_000_000
 """Candidates formed at a time."""
@@ -96,7 +99,7 @@ def all_stances(
     search = _Search(options, linkage, allowed, missing, memory_bytes)
     parts = search.on_holds()
     base = Found.join(parts)
-    base = base.take((base.contacts >= 0).any(axis=1))
+    base = base.take(np.asarray((base.contacts >= 0).any(axis=1)))
     if allowed.smears:
         smeared = search.extended(base, _smeared(options, base.contacts))
         base = Found.join([base, smeared])
@@ -122,15 +125,16 @@ class _Search:
         """Stances on holds and the floor, from single contacts to all four limbs."""
         choices = self._choices()
         singles = self._solved([((limb,), choices[limb][:, None]) for limb in Limb])
-        both = list(combinations(Limb, 2))
+        both: list[Limbs] = list(combinations(Limb, 2))
         doubles = self._solved([(pair, self._near(choices, pair)) for pair in both])
         parts = [singles[0], doubles[0]]
-        pairs = {pair: self._table(rows) for pair, rows in zip(both, doubles[1], strict=True)}
-        three = list(combinations(Limb, 3))
+        tables = [self._table(rows) for rows in doubles[1]]
+        pairs: dict[Limbs, Relation] = dict(zip(both, tables, strict=True))
+        three: list[Limbs] = list(combinations(Limb, 3))
         grown = [(limbs, rows) for limbs in three for rows in self._triples(limbs, pairs)]
         found, possible = self._solved(grown)
         parts.append(found)
-        triples = {}
+        triples: dict[Limbs, Ints] = {}
         for limbs in three:
             rows = np.concatenate(
                 [np.zeros((0, 3), np.int64),
@@ -155,7 +159,7 @@ class _Search:
         feet = np.append(np.flatnonzero(options.foot & usable), options.holds)
         return [hands, hands, feet, feet]
 
-    def _near(self, choices: list[Ints], both: tuple[Limb, ...]) -> Ints:
+    def _near(self, choices: list[Ints], both: Limbs) -> Ints:
         """Pairs of contacts that are within the body's length of each other. Shape (M, 2)."""
         options, linkage = self.options, self.linkage
         arm = linkage.reach[0] + linkage.shoulder_rise
@@ -172,7 +176,8 @@ class _Search:
             )
             rows.append(np.stack([first[near["i"]], second[near["j"]]], axis=1))
         floor = options.holds
-        tall = linkage.floor_reach + (linkage.trunk + arm if both[0] <= Limb.RH else linkage.reach[2])
+        upper = linkage.trunk + arm if both[0] <= Limb.RH else float(linkage.reach[2])
+        tall = linkage.floor_reach + upper
         height = options.point[:, 1] - options.floor_level
         for place in (0, 1):
             if floor not in choices[both[place]]:
@@ -196,7 +201,7 @@ class _Search:
             result = result[~full]
         return result.astype(np.int64)
 
-    def _solved(self, groups: list[tuple[tuple[Limb, ...], Ints]]) -> tuple[Found, list[Ints]]:
+    def _solved(self, groups: list[tuple[Limbs, Ints]]) -> tuple[Found, list[Ints]]:
         """Solve partial stances of several sets of limbs in one go.
 
         Returns the possible stances, and for each group the rows worth extending.
@@ -225,7 +230,7 @@ class _Search:
                 "(--avoid, or one lane of the wall), --no-smears or --no-matching would reduce it."
             )
 
-    def _table(self, rows: Ints) -> tuple[Flags, Ints, Ints]:
+    def _table(self, rows: Ints) -> Relation:
         """A pair relation: membership matrix, and its rows as starts and ends."""
         table = np.zeros((self.base, self.base), dtype=bool)
         table[rows[:, 0], rows[:, 1]] = True
@@ -254,8 +259,7 @@ class _Search:
             yield np.column_stack([repeated, partner])
             begin = end
 
-    def _triples(self, three: tuple[Limb, ...], pairs: dict[tuple[Limb, ...], tuple[Flags, Ints, Ints]]
-                 ) -> Iterator[Ints]:
+    def _triples(self, three: Limbs, pairs: dict[Limbs, Relation]) -> Iterator[Ints]:
         a, b, c = three
         table, _, _ = pairs[a, b]
         rows = np.argwhere(table)
@@ -264,8 +268,7 @@ class _Search:
         for grown in self._grown(rows, starts, ends):
             yield grown[outer[grown[:, 0], grown[:, 2]]]
 
-    def _quads(self, pairs: dict[tuple[Limb, ...], tuple[Flags, Ints, Ints]],
-               triples: dict[tuple[Limb, ...], Ints]) -> Iterator[Ints]:
+    def _quads(self, pairs: dict[Limbs, Relation], triples: dict[Limbs, Ints]) -> Iterator[Ints]:
         rows = triples[Limb.LH, Limb.RH, Limb.LF]
         _, starts, ends = pairs[Limb.LF, Limb.RF]
         keys = {three: self._key(found) for three, found in triples.items()}
@@ -313,7 +316,7 @@ def _struck(
         size = _radius(outline, options, int(pad)) if outline is not None else 0.0
         gap = np.linalg.norm(options.point - options.point[pad], axis=1)
         index = np.maximum(contacts, 0)
-        far = ((contacts >= 0) & (gap[index] > body + size)).any(axis=1)
+        far = np.asarray(((contacts >= 0) & (gap[index] > body + size)).any(axis=1))
         for hand in (Limb.LH, Limb.RH):
             rows = contacts[(contacts[:, hand] == FREE) & ~far].copy()
             rows[:, hand] = pad

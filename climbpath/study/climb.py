@@ -190,9 +190,8 @@ def _sources(
         *(np.arange(stances.first_sample[s], stances.first_sample[s + 1]) for s in found),
     ])
     held = tuple(
-        tuple(int(search.code.event(limb, np.array(stances.contacts[stances.sample_stance[p], limb])))
-              for limb in Limb)
-        for p in samples
+        tuple(int(search.code.event(limb, contact[limb:limb + 1])[0]) for limb in Limb)
+        for contact in stances.contacts[stances.sample_stance[samples]]
     )
     return search.code.node(samples, 0, READY), held
 
@@ -201,7 +200,7 @@ def _targets(wall: Wall, options: ContactOptions, search: SearchGraph) -> Ints:
     """Nodes in which a hand has just reached a finish hold."""
     stances = search.stances
     finish = [options.index(name) for name in wall.finish]
-    done = np.isin(stances.contacts[:, :2], finish).any(axis=1)
+    done = np.asarray(np.isin(stances.contacts[:, :2], finish).any(axis=1))
     samples = np.flatnonzero(done[stances.sample_stance])
     return np.concatenate(
         [search.code.node(samples, last, LANDED) for last in range(LASTS)]

@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Sequence
-from dataclasses import dataclass, replace
+from dataclasses import dataclass, field, replace
 
 import numpy as np
 from numpy.typing import NDArray
@@ -49,7 +49,7 @@ class PlanRequest:
     line_weight: float = LINE_WEIGHT
     alternatives: int = 1
     difference: float = DIFFERENCE
-    conditions: Conditions = Conditions()
+    conditions: Conditions = field(default_factory=Conditions)
     refine: bool = False
     trade_off: bool = False
     step: float = LATTICE_STEP
@@ -79,7 +79,7 @@ def factors_of(request: PlanRequest) -> tuple[int, int]:
 
 
 def best_route(climb: Climb, request: PlanRequest, forbidden: Sequence[int] = ()) -> Best | None:
-    """The best route under all conditions, no hand on a ``forbidden`` hold; None if there is none."""
+    """The best route under all conditions, no hand on a ``forbidden`` hold, or None."""
     graph = climb.search.graph
     sources, targets = climb.sources, climb.targets
     if not len(sources) or not len(targets):
@@ -87,7 +87,7 @@ def best_route(climb: Climb, request: PlanRequest, forbidden: Sequence[int] = ()
     kept: Ints | None = None
     if forbidden:
         stances = climb.search.stances
-        banned = np.isin(stances.contacts[:, :2], list(forbidden)).any(axis=1)
+        banned = np.asarray(np.isin(stances.contacts[:, :2], list(forbidden)).any(axis=1))
         mask = np.ones(graph.nodes, dtype=bool)
         per_sample = climb.search.code.plain // max(stances.samples, 1)
         mask[:climb.search.code.plain] = np.repeat(~banned[stances.sample_stance], per_sample)

@@ -63,7 +63,7 @@ class Plan:
 
 @dataclass(frozen=True)
 class WhyNot:
-    """Where nothing gets through: the placement that stops it and the least change that frees it."""
+    """Where nothing gets through: what stops it and the least change that frees it."""
 
     step: int
     limb: str | None

@@ -53,13 +53,15 @@ def parse_sequences(text: str, file: str = "") -> tuple[Sequence, ...]:
     try:
         rows = list(csv.reader(io.StringIO(text), strict=True))
     except csv.Error as error:
-        raise DataError([Problem(file, "", str(error), "a table of comma-separated values")]) from None
+        wrong = Problem(file, "", str(error), "a table of comma-separated values")
+        raise DataError([wrong]) from None
     if not rows:
         raise DataError([Problem(file, "", "an empty file", "a header line and rows")])
     header = [name.strip() for name in rows[0]]
     for name in header:
         if name not in COLUMNS:
-            problems.append(Problem(file, "line 1", f"column {name!r}", "one of " + ", ".join(COLUMNS)))
+            wanted = "one of " + ", ".join(COLUMNS)
+            problems.append(Problem(file, "line 1", f"column {name!r}", wanted))
     for name in ("step", "limb", "hold"):
         if name not in header:
             problems.append(Problem(file, "line 1", "", f"a column {name}"))
@@ -120,7 +122,8 @@ def _take_row(
         return
     placements = steps.setdefault(int(row["step"]), [])
     if any(placed.limb == limb for placed in placements):
-        problems.append(Problem(file, place, f"{limb} twice in step {row['step']}", "one row a limb"))
+        found = f"{limb} twice in step {row['step']}"
+        problems.append(Problem(file, place, found, "one row a limb"))
     placements.append(Placement(limb, hold, contact, release))
 
 
