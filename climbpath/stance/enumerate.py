@@ -292,11 +292,12 @@ def _member(known: Ints, wanted: Ints) -> Flags:
 
 def _smeared(options: ContactOptions, contacts: Ints) -> Ints:
     """Stances with one or both free feet smearing, where a hand has a hold."""
-    hand = (contacts[:, :2] >= 0).any(axis=1)
+    hand = np.asarray((contacts[:, :2] >= 0).any(axis=1))
     free = (contacts[:, 2:] == FREE) & hand[:, None]
     grown = []
     for feet in ((Limb.LF,), (Limb.RF,), (Limb.LF, Limb.RF)):
-        rows = contacts[free[:, [foot - 2 for foot in feet]].all(axis=1)].copy()
+        both = np.asarray(free[:, [foot - 2 for foot in feet]].all(axis=1))
+        rows = contacts[both].copy()
         rows[:, list(feet)] = SMEAR
         grown.append(rows)
     return np.concatenate(grown)
