@@ -7,7 +7,7 @@ from typing import TYPE_CHECKING, Any
 
 import click
 
-from climbpath.cli.options import BODY_OPTIONS, body_options, json_option, write_json
+from climbpath.cli.options import BODY_OPTIONS, body_options, json_option, say, write_json
 from climbpath.cli.options import resolve_athlete as resolve
 from climbpath.errors import UsageError
 
@@ -117,9 +117,9 @@ def new(file: str, force: bool, birth_year: int | None, **values: Any) -> None:
     )
     parse_athlete(text_of(athlete), file)  # what is written must be readable, the name too
     write_athlete(athlete, file)
-    click.echo(f"wrote {file}", err=True)
+    say(f"wrote {file}")
     for caution in _cautions(athlete):
-        click.echo(f"caution: {caution}", err=True)
+        say(f"caution: {caution}")
 
 
 @command.command("show")

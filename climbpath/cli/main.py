@@ -24,9 +24,6 @@ COMMANDS = {
 INTERRUPTED = 130
 """Exit code after Ctrl-C: 128 and the number of the signal."""
 
-MESSAGE_WIDTH = 600
-"""Longest line of a message, columns."""
-
 
 class _LazyGroup(click.Group):
     """A group whose commands are imported when they are needed, so that help stays fast."""
@@ -86,11 +83,11 @@ def _run() -> int:
 
 
 def _complain(message: str) -> None:
-    """A message on stderr, a line for each problem, with nothing in it that moves a cursor."""
-    from climbpath.figure.names import printable
+    """A message on stderr, a line for each problem."""
+    from climbpath.cli.options import say
 
-    lines = (printable(line, MESSAGE_WIDTH) for line in message.split("\n"))
-    click.echo("climbpath: " + "\n".join(lines), err=True)
+    for line in f"climbpath: {message}".split("\n"):
+        say(line)
 
 
 def _make_output_safe() -> None:

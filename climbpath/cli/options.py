@@ -14,6 +14,9 @@ if TYPE_CHECKING:
 
 Command = TypeVar("Command", bound=Callable[..., Any])
 
+MESSAGE_WIDTH = 600
+"""Longest line of a message, columns."""
+
 BODY_OPTIONS = (
     ("--sex", click.Choice(["female", "male"]), "Sex, for the body tables."),
     ("--stature-mm", float, "Stature, mm."),
@@ -93,6 +96,13 @@ def write_text(text: str, target: str) -> None:
         click.echo(text, nl=False)
     else:
         write_atomically(target, text)
+
+
+def say(message: str) -> None:
+    """One line on standard error, with nothing in it that moves a cursor."""
+    from climbpath.figure.names import printable
+
+    click.echo(printable(message, MESSAGE_WIDTH), err=True)
 
 
 def quiet_drawing() -> None:

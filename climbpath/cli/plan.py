@@ -7,7 +7,7 @@ from typing import TYPE_CHECKING, Any
 
 import click
 
-from climbpath.cli.options import athlete_options, json_option, resolve_athlete, write_text
+from climbpath.cli.options import athlete_options, json_option, resolve_athlete, say, write_text
 from climbpath.errors import DataError, NoWayUpError, Problem, UsageError
 
 if TYPE_CHECKING:
@@ -197,11 +197,11 @@ def _write(result: PlanResult, wall: Wall, json_target: str | None, out: str | N
     files = {} if out is None else plan_files(result, wall, document, table)
     if out is not None:
         write_files(files, out)
-        click.echo(f"wrote to {out}: {', '.join(files)}", err=True)
+        say(f"wrote to {out}: {', '.join(files)}")
     if json_target is not None:
         write_text(document, json_target)
         if json_target != "-":
-            click.echo(f"wrote {json_target}", err=True)
+            say(f"wrote {json_target}")
     if json_target != "-":
         click.echo(table, nl=False)
 

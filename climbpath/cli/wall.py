@@ -25,6 +25,7 @@ def command() -> None:
 def check(files: tuple[str, ...]) -> None:
     """Check wall files and print every problem of each; one line for each good one."""
     from climbpath.errors import DataError
+    from climbpath.figure.names import printable
     from climbpath.wall import read_wall
 
     problems: list[Problem] = []
@@ -34,7 +35,7 @@ def check(files: tuple[str, ...]) -> None:
         except DataError as error:
             problems += error.problems
         else:
-            click.echo(f"{name}: {summary(wall)}")
+            click.echo(f"{printable(name, 200)}: {summary(wall)}")
     if problems:
         raise DataError(problems)
 
@@ -45,7 +46,7 @@ def check(files: tuple[str, ...]) -> None:
 @click.option("--lane", metavar="ID", help="Draw this lane's holds and line alone.")
 def show(file: str, out: str, lane: str | None) -> None:
     """Draw a wall: holds, line, sections, floor and hole grid."""
-    from climbpath.cli.options import quiet_drawing
+    from climbpath.cli.options import quiet_drawing, say
     from climbpath.errors import UsageError
     from climbpath.figure.save import figure_format, save_figure
     from climbpath.figure.wall import wall_figure
@@ -61,7 +62,7 @@ def show(file: str, out: str, lane: str | None) -> None:
         wall = wall.lane_view(lane)
     quiet_drawing()
     save_figure(wall_figure(wall), out)
-    click.echo(f"wrote {out}", err=True)
+    say(f"wrote {out}")
 
 
 @command.command("convert", short_help="Convert wall files and tables of holds.")
@@ -114,6 +115,7 @@ def convert(
     """
     from dataclasses import replace
 
+    from climbpath.cli.options import say
     from climbpath.errors import UsageError
     from climbpath.wall import mirror, read_wall, write_wall
     from climbpath.wall.table import read_table, write_table
@@ -138,7 +140,7 @@ def convert(
         write_table(wall, target, "\t" if separator == "tab" else separator)
     else:
         write_wall(wall, target)
-    click.echo(f"wrote {target}: {summary(wall)}", err=True)
+    say(f"wrote {target}: {summary(wall)}")
 
 
 def summary(wall: Wall) -> str:

@@ -69,8 +69,8 @@ class JointLimits:
     """Joint ranges as limits on where contacts may be seen from the trunk.
 
     ``height`` (4, N): a hand not below the hips (below them it can neither pull nor press), a toe
-    not above its hip (a straight leg lifts to about a right angle, from memory). ``across`` (4, N)
-    with slope (3, 4, N): the limb does not cross the body too far. ``lift`` (2, N) with slope
+    not above its hip (a straight leg lifts to about a right angle, from memory). ``across``
+    (4, N): the contact is not too far on the other side of the body. ``lift`` (2, N) with slope
     (3, 2, N): the thigh at full flexion still lets the lower leg come down to the toe,
     |toe - knee| >= lower leg in the plane of hip, toe and trunk, and ``lift_curve`` (6, 2, N) its
     second derivatives (xx, xy, xz, yy, yz, zz). ``out`` (2, N): the toe's distance
@@ -79,7 +79,6 @@ class JointLimits:
 
     height: Array
     across: Array
-    across_slope: Array
     lift: Array
     lift_slope: Array
     lift_curve: list[Array]
@@ -90,9 +89,6 @@ def joint_limits(linkage: Linkage, geometry: LimbGeometry) -> JointLimits:
     """Evaluate the joint ranges of N trunks."""
     away = geometry.along * geometry.distance
     side = LIMB_SIDE[:, None]
-    cross = linkage.across[:, None]
-    across_slope = cross * geometry.along
-    across_slope[0] += side
     height = np.empty_like(geometry.distance)
     height[:2] = geometry.point[1, :2]
     height[2:] = -away[1, 2:]
@@ -108,8 +104,7 @@ def joint_limits(linkage: Linkage, geometry: LimbGeometry) -> JointLimits:
              for i, j in UPPER]
     return JointLimits(
         height=height,
-        across=cross * geometry.distance + side * away[0],
-        across_slope=across_slope,
+        across=linkage.across[:, None] + side * away[0],
         lift=gap - linkage.lower_leg[1],
         lift_slope=np.stack([before * x / level, above, before * z / level]),
         lift_curve=curve,

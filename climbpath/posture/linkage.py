@@ -30,6 +30,10 @@ ARM_ACROSS = np.deg2rad(25.0)
 """How far an arm may point across the body, past straight ahead (a choice of the model: crossed
 arms are rare in fast climbing)."""
 
+BENT = 0.7
+"""Share of a leg's full reach at which its limit on crossing is taken. The limit is a plane, which
+keeps the allowed places convex: an angle alone would let a bent leg cross less than it can."""
+
 TRUNK_TURN = np.deg2rad(50.0)
 """Largest angle between the front of the trunk and the surface's inward normal (a choice of the
 model; it also keeps every arm well inside the shoulder's extension range)."""
@@ -49,7 +53,8 @@ class Linkage:
     distance knee to toe that the ankle's range allows; ``reach`` (4,) the longest distance from
     root to contact of a gripping hand and of a toe; ``fold`` (4,) the shortest. ``knee_limit``:
     the knee before and above the hip at full flexion; ``out_limit``: how far a toe may stand to
-    the side of its hip; ``across`` (4,): sine of the angle a limb may cross the body by.
+    the side of its hip; ``across`` (4,) [m]: how far a contact may lie beyond its limb's root on
+    the other side of the body.
     """
 
     roots: Array
@@ -146,7 +151,8 @@ def linkage_of(athlete: Athlete) -> Linkage:
         fold=np.array([arm_fold, arm_fold, leg_fold, leg_fold]),
         knee_limit=thigh * np.array([cos(lift), sin(lift)]),
         out_limit=leg * sin(limit["hip_abduction"]),
-        across=np.sin([ARM_ACROSS, ARM_ACROSS, limit["hip_adduction"], limit["hip_adduction"]]),
+        across=np.array([arm, arm, BENT * leg, BENT * leg])
+        * np.sin([ARM_ACROSS, ARM_ACROSS, limit["hip_adduction"], limit["hip_adduction"]]),
         head=length("neck_head"),
         chest_height=0.75 * length("trunk"),
         pelvis_space=length("pelvis_depth") / 2,

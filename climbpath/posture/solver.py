@@ -36,7 +36,7 @@ from climbpath.posture.linkage import LIMB_SIDE, Linkage
 Array = NDArray[np.float64]
 Ints = NDArray[np.int64]
 
-CHUNK = 1024
+CHUNK = 4096
 """Stances solved together: arrays of this length stay in the processor's cache."""
 
 STEPS = (20, 26, 30)
@@ -50,12 +50,9 @@ heavy while far from the optimum, where the turn's curvature is often negative."
 HARD_TOLERANCE = 1e-4
 """How far a hard limit may be missed by rounding of the iteration, m."""
 
-RETRY_BELOW = (0.03, 0.01)
-"""Stances whose margin so far is under this (m) are solved from the next start too: a fold or a
-joint range can hold a start in a local optimum, and near zero that decides."""
-
 HELD_ABOVE = 0.05
-"""Multiplier above which such a limit counts as holding the optimum."""
+"""Multiplier above which a limit counts as holding an optimum. Where one of ``NOT_CONVEX`` does, the
+optimum may be a local one, and the stance is solved from the next start too."""
 
 FIRST_DROP = 7
 DROP_SHARE = 0.12
@@ -94,8 +91,8 @@ def solve_postures(linkage: Linkage, batch: StanceBatch) -> Postures:
 
 def _solve_chunk(linkage: Linkage, batch: StanceBatch) -> Postures:
     best, finished = _descend(linkage, batch, *_start(linkage, batch, 0), STEPS[0])
-    for attempt, below in enumerate(RETRY_BELOW, start=1):
-        doubtful = np.flatnonzero((best.margin < below) | ~finished)
+    for attempt in range(1, len(STEPS)):
+        doubtful = np.flatnonzero(~finished)
         if not len(doubtful):
             break
         again = batch.take(doubtful)
@@ -152,8 +149,9 @@ POINTS = 20
 """Rows of the arrays of limits: four for each kind of all limbs, two for each of the legs, then
 one for each limit of a trunk point or floor foot."""
 
-NOT_CONVEX = (*range(4, 8), *range(12, 18))
-"""Rows of limits whose allowed regions are not convex: fold, across and lift."""
+NOT_CONVEX = (*range(4, 8), *range(12, 20))
+"""Rows of limits whose allowed places are not convex, by themselves or once the trunk turns: fold,
+across, lift and out."""
 
 
 @dataclass(frozen=True)
@@ -239,8 +237,6 @@ def _descend(
     run.active = _active(batch, layout, state.points)
     run.slacks = np.where(run.active, np.maximum(state.value, 0.03), 1.0)
     run.multipliers = np.where(run.active, 0.02 / run.slacks, 0.0)
-    doubtful = [*NOT_CONVEX, *(row for row, limit in enumerate(state.points, start=POINTS)
-                               if not limit.shifts)]
     for iteration in range(1, steps + 1):
         _step(run, state)
         state = _evaluate(linkage, run, layout)
@@ -248,7 +244,7 @@ def _descend(
         done = (run.target < CONVERGED) & (least > -HARD_TOLERANCE)
         last = iteration == steps
         if last or (iteration >= FIRST_DROP and done.mean() > DROP_SHARE):
-            held = (run.multipliers[doubtful] > HELD_ABOVE).any(axis=0)
+            held = (run.multipliers[list(NOT_CONVEX)] > HELD_ABOVE).any(axis=0)
             gone = np.ones(len(done), dtype=bool) if last else done
             where = run.index[gone]
             end.turn[..., where], end.shift[:, where] = run.turn[..., gone], run.shift[:, gone]
@@ -310,19 +306,19 @@ def _newton(run: _Run, state: _State) -> Array:
     weight = m / run.slacks
     right = np.where(run.active, m + target / run.slacks - weight * state.value, 0.0)
     u = state.geometry.along
-    joints, cross = state.joints, state.joints.across_slope
-    # Reach limits have slope -u, folds +u; both bend like the distance, (1 - u u^T) / d, and so
-    # does the share of it in the limit on crossing.
-    sine = cross[0] * u[0] + cross[1] * u[1] + cross[2] * u[2] - LIMB_SIDE[:, None] * u[0]
-    bend = (m[REACH] - m[FOLD] - sine * m[ACROSS]) / state.geometry.distance
+    joints, side = state.joints, LIMB_SIDE[:, None]
+    # Reach limits have slope -u, folds +u; both bend like the distance, (1 - u u^T) / d.
+    bend = (m[REACH] - m[FOLD]) / state.geometry.distance
     along = weight[REACH] + weight[FOLD] - bend
-    inner = [along * u[i] * u[j] + weight[ACROSS] * cross[i] * cross[j]
-             + (bend if i == j else 0.0) for i, j in UPPER]
+    inner = [along * u[i] * u[j] + (bend if i == j else 0.0) for i, j in UPPER]
+    inner[0] = inner[0] + weight[ACROSS]
     # While the shoulder lifts with the hand, distance does not change along the trunk.
     inner[3] = np.where(state.geometry.rising, inner[3] - bend, inner[3])
     inner[3] = inner[3] + weight[HEIGHT]
-    pull = (right[FOLD] - right[REACH]) * u + right[ACROSS] * cross
-    curve = (m[FOLD] - m[REACH]) * u + m[ACROSS] * cross
+    pull = (right[FOLD] - right[REACH]) * u
+    curve = (m[FOLD] - m[REACH]) * u
+    pull[0] += side * right[ACROSS]
+    curve[0] += side * m[ACROSS]
     pull[1] += HEIGHT_SIDE[:, None] * right[HEIGHT]
     curve[1] += HEIGHT_SIDE[:, None] * m[HEIGHT]
     lift = joints.lift_slope
@@ -330,9 +326,8 @@ def _newton(run: _Run, state: _State) -> Array:
     curve[:, 2:] += m[LIFT] * lift
     for slot, (i, j) in enumerate(UPPER):
         inner[slot][2:] += weight[LIFT] * lift[i] * lift[j] - m[LIFT] * joints.lift_curve[slot]
-    side = LIMB_SIDE[2:, None]
-    pull[0, 2:] -= side * right[OUT]
-    curve[0, 2:] -= side * m[OUT]
+    pull[0, 2:] -= side[2:] * right[OUT]
+    curve[0, 2:] -= side[2:] * m[OUT]
     inner[0][2:] += weight[OUT]
     system.add_limbs(state.geometry.point, inner, pull, curve, -weight[REACH] * u)
     system.matrix[6][6] += weight[REACH].sum(axis=0) + 1e-9
@@ -353,7 +348,7 @@ def _linear_change(state: _State, step: Array) -> Array:
     change[FOLD] = (state.geometry.along * moved).sum(axis=0)
     change[REACH] = -change[FOLD] - t
     change[HEIGHT] = HEIGHT_SIDE[:, None] * moved[1]
-    change[ACROSS] = (state.joints.across_slope * moved).sum(axis=0)
+    change[ACROSS] = LIMB_SIDE[:, None] * moved[0]
     change[LIFT] = (state.joints.lift_slope * moved[:, 2:]).sum(axis=0)
     change[OUT] = -LIMB_SIDE[2:, None] * moved[0, 2:]
     for row, limit in enumerate(state.points, start=POINTS):

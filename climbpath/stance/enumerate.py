@@ -124,11 +124,12 @@ class _Search:
     def on_holds(self) -> list[Found]:
         """Stances on holds and the floor, from single contacts to all four limbs."""
         choices = self._choices()
-        singles = self._solved([((limb,), choices[limb][:, None]) for limb in Limb])
         both: list[Limbs] = list(combinations(Limb, 2))
-        doubles = self._solved([(pair, self._near(choices, pair)) for pair in both])
-        parts = [singles[0], doubles[0]]
-        tables = [self._table(rows) for rows in doubles[1]]
+        single: list[tuple[Limbs, Ints]] = [((limb,), choices[limb][:, None]) for limb in Limb]
+        double = [(pair, self._near(choices, pair)) for pair in both]
+        found, possible = self._solved([*single, *double])
+        parts = [found]
+        tables = [self._table(rows) for rows in possible[len(single):]]
         pairs: dict[Limbs, Relation] = dict(zip(both, tables, strict=True))
         three: list[Limbs] = list(combinations(Limb, 3))
         grown = [(limbs, rows) for limbs in three for rows in self._triples(limbs, pairs)]

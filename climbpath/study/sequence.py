@@ -10,16 +10,20 @@ from __future__ import annotations
 import csv
 import io
 import math
+from collections import Counter
 from collections.abc import Mapping
-from dataclasses import dataclass
+from dataclasses import dataclass, field
 
 from climbpath.contacts import CONTACT_CODES, LIMB_NAMES
-from climbpath.errors import DataError, Problem
 from climbpath.files import read_text
 from climbpath.study.results import Plan
+from climbpath.wall.checking import Checker, has_control, shown
 
 COLUMNS = ("run", "step", "limb", "hold", "contact_s", "release_s", "x_mm", "y_mm", "note")
 MAX_ROWS = 100_000
+SECONDS = (0.0, 1e5, "seconds, 0 or more")
+MILLIMETRES = (-1e6, 1e6, "millimetres")
+"""Bounds of the numbers of a table, and what a message says is expected."""
 
 
 @dataclass(frozen=True)
@@ -49,114 +53,128 @@ def read_sequences(path: str) -> tuple[Sequence, ...]:
 
 def parse_sequences(text: str, file: str = "") -> tuple[Sequence, ...]:
     """All runs of a table given as text, in the order they first appear."""
-    problems: list[Problem] = []
+    check = Checker(file)
+    rows = _rows(text, check)
+    check.raise_if_any()
+    header = [name.strip() for name in rows[0][1]]
+    _check_header(header, f"line {rows[0][0]}", check)
+    if len(rows) - 1 > MAX_ROWS:
+        check.add("", f"{len(rows) - 1} rows", f"at most {MAX_ROWS}")
+    check.raise_if_any()
+    table = _Table()
+    for number, cells in rows[1:]:
+        if len(cells) == len(header):
+            row = dict(zip(header, (cell.strip() for cell in cells), strict=True))
+            _take_row(f"line {number}", row, table, check)
+        else:
+            check.add(f"line {number}", f"{len(cells)} cells", f"{len(header)} cells")
+    if len(rows) == 1:
+        check.add("", "no rows", "at least one placement")
+    result = tuple(_assembled(run, table, check) for run in table.steps)
+    check.raise_if_any()
+    return result
+
+
+@dataclass
+class _Table:
+    """What the rows say, by run: placements by step, total time, note."""
+
+    steps: dict[str, dict[int, list[Placement]]] = field(default_factory=dict)
+    totals: dict[str, float] = field(default_factory=dict)
+    notes: dict[str, str] = field(default_factory=dict)
+
+
+def _rows(text: str, check: Checker) -> list[tuple[int, list[str]]]:
+    """Line number and cells of every row that is not empty; at least one, or a problem."""
+    reader = csv.reader(io.StringIO(text), strict=True)
+    rows = []
     try:
-        rows = list(csv.reader(io.StringIO(text), strict=True))
+        for cells in reader:
+            if any(cell.strip() for cell in cells):
+                rows.append((reader.line_num, cells))
     except csv.Error as error:
-        wrong = Problem(file, "", str(error), "a table of comma-separated values")
-        raise DataError([wrong]) from None
+        expected = "a table of comma-separated values"
+        check.add(f"line {reader.line_num}", str(error), expected)
+        return rows
     if not rows:
-        raise DataError([Problem(file, "", "an empty file", "a header line and rows")])
-    header = [name.strip() for name in rows[0]]
-    for name in header:
+        check.add("", "an empty file", "a header line and rows")
+    return rows
+
+
+def _check_header(header: list[str], place: str, check: Checker) -> None:
+    for name, count in Counter(header).items():
         if name not in COLUMNS:
-            wanted = "one of " + ", ".join(COLUMNS)
-            problems.append(Problem(file, "line 1", f"column {name!r}", wanted))
+            check.add(place, f"the column {shown(name)}", "one of " + ", ".join(COLUMNS))
+        elif count > 1:
+            check.add(place, f"the column {name} twice", "each column once")
     for name in ("step", "limb", "hold"):
         if name not in header:
-            problems.append(Problem(file, "line 1", "", f"a column {name}"))
-    if len(rows) - 1 > MAX_ROWS:
-        problems.append(Problem(file, "", f"{len(rows) - 1} rows", f"at most {MAX_ROWS}"))
-    if problems:
-        raise DataError(problems)
-    runs: dict[str, dict[int, list[Placement]]] = {}
-    totals: dict[str, float] = {}
-    notes: dict[str, str] = {}
-    for number, cells in enumerate(rows[1:], start=2):
-        if not any(cell.strip() for cell in cells):
-            continue
-        if len(cells) != len(header):
-            problems.append(
-                Problem(file, f"line {number}", f"{len(cells)} cells", f"{len(header)} cells")
-            )
-            continue
-        _take_row(file, number, dict(zip(header, (c.strip() for c in cells), strict=True)),
-                  runs, totals, notes, problems)
-    result = [
-        _assembled(file, run, steps, totals.get(run), notes.get(run, ""), problems)
-        for run, steps in runs.items()
-    ]
-    if not result and not problems:
-        problems.append(Problem(file, "", "no rows", "at least one placement"))
-    if problems:
-        raise DataError(problems)
-    return tuple(result)
+            check.add(place, "no such column", f"a column {name}")
 
 
-def _take_row(
-    file: str, number: int, row: Mapping[str, str], runs: dict[str, dict[int, list[Placement]]],
-    totals: dict[str, float], notes: dict[str, str], problems: list[Problem],
-) -> None:
-    place = f"line {number}"
+def _take_row(place: str, row: Mapping[str, str], table: _Table, check: Checker) -> None:
     run, limb, hold = row.get("run", ""), row["limb"], row["hold"]
-    steps = runs.setdefault(run, {})
-    contact = _seconds(file, place, "contact_s", row, problems)
-    release = _seconds(file, place, "release_s", row, problems)
+    for key in ("run", "hold", "note"):
+        if has_control(row.get(key, "")):
+            check.add(f"{place} {key}", shown(row[key]), "a text without control characters")
+    steps = table.steps.setdefault(run, {})
+    contact = _number(place, "contact_s", row, check, SECONDS)
+    release = _number(place, "release_s", row, check, SECONDS)
+    for key in ("x_mm", "y_mm"):
+        _number(place, key, row, check, MILLIMETRES)
     if row.get("note"):
-        notes[run] = row["note"]
+        table.notes[run] = row["note"]
     if limb == "total":
-        if contact is None:
-            problems.append(Problem(file, f"{place} contact_s", "", "the total time in seconds"))
-        else:
-            totals[run] = contact
+        if not row.get("contact_s"):
+            check.add(f"{place} contact_s", "nothing", "the total time in seconds")
+        elif contact is not None:
+            table.totals[run] = contact
         return
     if limb not in LIMB_NAMES:
-        wanted = ", ".join((*LIMB_NAMES, "total"))
-        problems.append(Problem(file, f"{place} limb", repr(limb), f"one of {wanted}"))
+        check.add(f"{place} limb", shown(limb), f"one of {', '.join((*LIMB_NAMES, 'total'))}")
     if not hold:
-        problems.append(Problem(file, f"{place} hold", "", "a hold id, floor, free or smear"))
+        check.add(f"{place} hold", "nothing", "a hold id, floor, free or smear")
     if limb in ("LH", "RH") and hold in ("floor", "smear"):
-        problems.append(Problem(file, f"{place} hold", repr(hold), "a hold id or free for a hand"))
-    if not row["step"].isascii() or not row["step"].isdigit() or len(row["step"]) > 6:
-        problems.append(Problem(file, f"{place} step", repr(row["step"]), "a whole number from 0"))
+        check.add(f"{place} hold", shown(hold), "a hold id or free for a hand")
+    step = row["step"]
+    if not step.isascii() or not step.isdigit() or len(step) > 6:
+        check.add(f"{place} step", shown(step), "a whole number from 0")
         return
-    placements = steps.setdefault(int(row["step"]), [])
+    placements = steps.setdefault(int(step), [])
     if any(placed.limb == limb for placed in placements):
-        found = f"{limb} twice in step {row['step']}"
-        problems.append(Problem(file, place, found, "one row a limb"))
+        check.add(place, f"{shown(limb)} twice in step {step}", "one row a limb")
     placements.append(Placement(limb, hold, contact, release))
 
 
-def _seconds(file: str, place: str, key: str, row: Mapping[str, str], problems: list[Problem]
-             ) -> float | None:
+def _number(
+    place: str, key: str, row: Mapping[str, str], check: Checker, bounds: tuple[float, float, str]
+) -> float | None:
+    """A number of a cell, None where it is empty or, with a problem noted, out of bounds."""
     text = row.get(key, "")
     if not text:
         return None
+    low, high, expected = bounds
     try:
         value = float(text)
     except ValueError:
         value = math.nan
-    if not math.isfinite(value) or not 0.0 <= value < 1e5:
-        problems.append(Problem(file, f"{place} {key}", repr(text), "seconds, 0 or more"))
+    if not low <= value < high:
+        check.add(f"{place} {key}", shown(text), expected)
         return None
     return value
 
 
-def _assembled(
-    file: str, run: str, steps: dict[int, list[Placement]], total: float | None, note: str,
-    problems: list[Problem],
-) -> Sequence:
-    numbers = sorted(steps)
-    if numbers and numbers != list(range(numbers[0], numbers[0] + len(numbers))):
-        name = f"run {run}" if run else "steps"
-        problems.append(Problem(file, name, "gaps in the numbering", "steps one after another"))
+def _assembled(run: str, table: _Table, check: Checker) -> Sequence:
+    numbers = sorted(table.steps[run])
+    place = f"run {shown(run)}" if run else "steps"
+    if numbers and numbers[-1] - numbers[0] != len(numbers) - 1:
+        check.add(place, "gaps in the numbering", "steps one after another")
     if numbers and numbers[0] > 1:
-        problems.append(Problem(file, f"run {run}" if run else "steps", f"first step {numbers[0]}",
-                                "step 0 (the start) or 1 first"))
-    listed = [tuple(steps[number]) for number in numbers]
+        check.add(place, f"first step {numbers[0]}", "step 0 (the start) or 1 first")
+    listed = [tuple(table.steps[run][number]) for number in numbers]
     if numbers and numbers[0] == 1:
         listed.insert(0, ())
-    return Sequence(run, tuple(listed), total, note)
+    return Sequence(run, tuple(listed), table.totals.get(run), table.notes.get(run, ""))
 
 
 def format_plan(plan: Plan, run: str = "plan") -> str:
