@@ -15,7 +15,13 @@ from numpy.typing import NDArray
 from climbpath.contacts import Limb
 from climbpath.posture.batch import StanceBatch
 from climbpath.posture.limits import limb_geometry
-from climbpath.posture.linkage import GRIP_SHARE, KNEE_SPACE, LIMB_SIDE, Linkage
+from climbpath.posture.linkage import (
+    ELBOW_SPACE,
+    GRIP_SHARE,
+    KNEE_SPACE,
+    LIMB_SIDE,
+    Linkage,
+)
 
 Array = NDArray[np.float64]
 
@@ -75,7 +81,7 @@ def assemble(linkage: Linkage, batch: StanceBatch, turn: Array, shift: Array) ->
         rest += _off_wall(batch, rest, 0.03)
         end = np.where(engaged, batch.target[:, limb], rest)
         if limb <= Limb.RH:
-            _arm(linkage, joints, limb, start, end, batch.reach[limb] - linkage.reach[limb])
+            _arm(linkage, batch, joints, limb, start, end)
         else:
             ground = _below(batch, start)
             _leg(linkage, batch, joints, limb, start, np.where(floor, ground, end), floor)
@@ -119,13 +125,15 @@ def _middle(
     return start + axis * along, radius, axis
 
 
-def _arm(linkage: Linkage, joints: Array, limb: Limb, shoulder: Array, end: Array,
-         extra: Array) -> None:
+def _arm(
+    linkage: Linkage, batch: StanceBatch, joints: Array, limb: Limb, shoulder: Array, end: Array
+) -> None:
     first = FIRST_JOINT[limb]
-    fore = linkage.forearm + GRIP_SHARE * linkage.hand + extra
+    strike = batch.reach[limb] - linkage.reach[limb]
+    fore = linkage.forearm + GRIP_SHARE * linkage.hand + strike
     way = (ELBOW_WAY * [LIMB_SIDE[limb], 1.0, 1.0])[:, None] + np.zeros_like(shoulder)
     centre, radius, axis = _middle(shoulder, end, linkage.upper_arm, fore)
-    elbow = centre + radius * _across(way, axis)
+    elbow = centre + radius * _clear(batch, centre, radius, axis, _across(way, axis), ELBOW_SPACE)
     joints[first] = shoulder
     joints[first + 1] = elbow
     direction = _unit(end - elbow)
@@ -149,22 +157,25 @@ def _leg(linkage: Linkage, batch: StanceBatch, joints: Array, limb: Limb, hip: A
     lower = np.where(floor, linkage.shank, lower_leg(linkage, distance))
     way = (KNEE_WAY * [LIMB_SIDE[limb], 1.0, 1.0])[:, None] + np.zeros_like(hip)
     centre, radius, axis = _middle(hip, goal, linkage.thigh, lower)
-    knee = centre + radius * _clear(batch, centre, radius, axis, _across(way, axis))
+    knee = centre + radius * _clear(batch, centre, radius, axis, _across(way, axis), KNEE_SPACE)
     joints[first] = hip
     joints[first + 1] = knee
     reach = _unit(goal - knee)
     toe = knee + reach * lower
-    # Triangle knee, ankle, toe: the heel side points off the wall.
+    # Triangle knee, ankle, toe: in the leg's plane, with the heel on the hip's side, as the hinges
+    # of knee and ankle are parallel; off the wall where the leg is straight.
     along = (lower**2 + linkage.shank**2 - linkage.toe**2) / (2.0 * lower)
     height = np.sqrt(np.maximum(linkage.shank**2 - along**2, 0.0))
-    off = _across(batch.plane[0, 0, :3], reach)
+    off = _across(_across(hip - knee, reach) * radius + 1e-4 * batch.plane[0, 0, :3], reach)
     ankle = np.where(floor, knee + reach * linkage.shank, knee + reach * along + off * height)
     joints[first + 2] = ankle
     joints[first + 3] = np.where(floor, end, toe)
 
 
-def _clear(batch: StanceBatch, centre: Array, radius: Array, axis: Array, way: Array) -> Array:
-    """Turn the knee about its circle just far enough to keep it off the wall.
+def _clear(
+    batch: StanceBatch, centre: Array, radius: Array, axis: Array, way: Array, space: float
+) -> Array:
+    """Turn a middle joint about its circle just far enough to keep it ``space`` off the wall.
 
     Returns the unit direction (3, N) from the circle's centre. If the preferred direction stands
     too near the wall, the part along the most outward direction is raised to what is needed.
@@ -173,7 +184,7 @@ def _clear(batch: StanceBatch, centre: Array, radius: Array, axis: Array, way: A
     gap = (normal * centre).sum(axis=0) + offset
     outward = _across(normal, axis)
     steep = np.maximum((normal * outward).sum(axis=0), 1e-6)
-    needed = np.clip((KNEE_SPACE - gap) / np.maximum(radius * steep, 1e-9), -1.0, 1.0)
+    needed = np.clip((space - gap) / np.maximum(radius * steep, 1e-9), -1.0, 1.0)
     has = (way * outward).sum(axis=0)
     rest = way - outward * has
     raised = outward * needed + _unit(rest) * np.sqrt(1.0 - needed**2)

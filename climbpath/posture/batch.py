@@ -24,8 +24,10 @@ class StanceBatch:
 
     ``target`` (3, 4, N) [m]: contact points (meaningless for free limbs and floor feet).
     ``engaged`` (4, N) bool: the limb has a contact point. ``floor`` (4, N) bool: the foot stands
-    on the ground. ``reach`` (4, N) [m]: longest distance root to contact. ``vertical`` (3, N):
-    world up; ``floor_level`` (N,) [m]: height of the ground along it. ``plane`` (2, 2, 4, N):
+    on the ground. ``reach`` and ``fold`` (4, N) [m]: longest and shortest distance root to contact.
+    ``vertical`` (3, N): world up; ``floor_level`` (N,) [m]: height of the ground along it.
+    ``out`` (3, N): world axis out of the wall; ``floor_out`` (N,) [m]: where along it the surface
+    meets the ground. ``plane`` (2, 2, 4, N):
     for pelvis and chest two planes each, normal and offset, that the point must stay clear of.
     ``origin`` (3, N), ``axes`` (3, 3, N): base axes in the world (rows right, up, out).
     """
@@ -34,8 +36,11 @@ class StanceBatch:
     engaged: NDArray[np.bool_]
     floor: NDArray[np.bool_]
     reach: Array
+    fold: Array
     vertical: Array
     floor_level: Array
+    out: Array
+    floor_out: Array
     plane: Array
     origin: Array
     axes: Array
@@ -96,6 +101,8 @@ def stance_batch(
     origin = surface.origin[home]
     reach = np.repeat(linkage.reach[:, None], count, axis=1)
     reach += np.where(strike.T, linkage.strike_extra, 0.0)
+    fold = np.where(strike.T, linkage.strike_fold, linkage.fold[:, None])
+    meets = surface.to_world(0.0, floor_level / surface.up[0, 1])[2]
     axes_first = np.ascontiguousarray(np.moveaxis(axes, 1, 2))
     origin_first = np.ascontiguousarray(origin.T)
     safe = np.where(engaged[:, :, None], points, middle[:, None, :])
@@ -107,8 +114,11 @@ def stance_batch(
         engaged=np.ascontiguousarray(engaged.T),
         floor=np.ascontiguousarray(floor.T),
         reach=reach,
+        fold=fold,
         vertical=vertical,
         floor_level=floor_level - origin_first[1],
+        out=np.ascontiguousarray(axes_first[:, 2, :]),
+        floor_out=meets - origin_first[2],
         plane=_planes(linkage, surface, home, along, axes_first, origin_first),
         origin=origin_first,
         axes=axes_first,

@@ -13,7 +13,13 @@ import numpy as np
 from numpy.typing import NDArray
 
 from climbpath.posture.batch import StanceBatch
-from climbpath.posture.linkage import LIMB_SIDE, TRUNK_TILT, TRUNK_TURN, Linkage
+from climbpath.posture.linkage import (
+    LIMB_SIDE,
+    TOE_SPACE,
+    TRUNK_TILT,
+    TRUNK_TURN,
+    Linkage,
+)
 
 Array = NDArray[np.float64]
 
@@ -169,6 +175,10 @@ def point_limits(
             PointLimit(linkage.floor_reach - spare - height, -normal, root, True, True, active)
         )
         limits.append(PointLimit(height - linkage.fold[foot], normal, root, True, False, active))
+        # The ground point below the hip lies before the surface, also of a slab.
+        ahead = _into_trunk(turn, batch.out)
+        value = _dot(batch.out, shift) + _dot(root, ahead) - batch.floor_out - TOE_SPACE
+        limits.append(PointLimit(value, ahead, root, True, False, active))
     return limits
 
 
@@ -193,7 +203,7 @@ def slack(
     count = batch.size
     geometry = limb_geometry(linkage, batch, turn, shift)
     spare = np.where(batch.engaged, batch.reach - geometry.distance, np.inf).min(axis=0)
-    fold = geometry.distance - linkage.fold[:, None]
+    fold = geometry.distance - batch.fold
     hard = np.where(batch.engaged, fold, np.inf).min(axis=0)
     joints = joint_limits(linkage, geometry)
     for value in (joints.height, joints.across, joints.lift, joints.out):

@@ -7,7 +7,7 @@ shoulder line, z out of the back (away from the wall). The origin is the hip cen
 from __future__ import annotations
 
 from dataclasses import dataclass
-from math import asin, cos, pi, sin, sqrt
+from math import acos, asin, cos, pi, sin, sqrt
 
 import numpy as np
 from numpy.typing import NDArray
@@ -41,6 +41,12 @@ model; it also keeps every arm well inside the shoulder's extension range)."""
 KNEE_SPACE = 0.04
 """Least distance of a knee's centre from the surface, m (half a slim knee's depth, from memory)."""
 
+ELBOW_SPACE = 0.03
+"""Least distance of an elbow's centre from the surface, m (from memory)."""
+
+TOE_SPACE = 0.02
+"""A foot on the floor stands at least this far before the surface, m."""
+
 LIMB_SIDE = np.array([-1.0, 1.0, -1.0, 1.0])
 """-1 for a left, +1 for a right limb, in the order of ``Limb``."""
 
@@ -51,7 +57,8 @@ class Linkage:
 
     ``roots`` (4, 3): shoulder and hip joints in trunk axes. ``lower_leg`` is the range of the
     distance knee to toe that the ankle's range allows; ``reach`` (4,) the longest distance from
-    root to contact of a gripping hand and of a toe; ``fold`` (4,) the shortest. ``knee_limit``:
+    root to contact of a gripping hand and of a toe; ``fold`` (4,) the shortest,
+    ``strike_fold`` that of a hand that touches with the fingertip. ``knee_limit``:
     the knee before and above the hip at full flexion; ``out_limit``: how far a toe may stand to
     the side of its hip; ``across`` (4,) [m]: how far a contact may lie beyond its limb's root on
     the other side of the body.
@@ -70,6 +77,7 @@ class Linkage:
     lower_leg: tuple[float, float, float]
     reach: Array
     fold: Array
+    strike_fold: float
     knee_limit: Array
     out_limit: float
     across: Array
@@ -124,7 +132,12 @@ def linkage_of(athlete: Athlete) -> Linkage:
     arm = length("upper_arm") + arm_end
     arm_fold = _side(length("upper_arm"), arm_end, pi - limit["elbow_flexion"])
     leg = thigh + lower_leg[2]
-    leg_fold = _side(thigh, lower_leg[1], pi - limit["knee_flexion"])
+    # The knee bends between thigh and shank; the line knee to toe opens wider by the angle at the
+    # knee between shank and that line.
+    heel = acos((lower_leg[1] ** 2 + shank**2 - toe**2) / (2.0 * lower_leg[1] * shank))
+    leg_fold = _side(thigh, lower_leg[1], pi - limit["knee_flexion"] + heel)
+    strike_fold = _side(length("upper_arm"), arm_end + (1.0 - GRIP_SHARE) * length("hand"),
+                        pi - limit["elbow_flexion"])
     shoulder, hip = length("shoulder_half_width"), length("hip_half_width")
     lift = limit["hip_flexion"] - pi / 2
     segments = segment_table(athlete)
@@ -149,6 +162,7 @@ def linkage_of(athlete: Athlete) -> Linkage:
         lower_leg=lower_leg,
         reach=np.array([arm, arm, leg, leg]),
         fold=np.array([arm_fold, arm_fold, leg_fold, leg_fold]),
+        strike_fold=strike_fold,
         knee_limit=thigh * np.array([cos(lift), sin(lift)]),
         out_limit=leg * sin(limit["hip_abduction"]),
         across=np.array([arm, arm, BENT * leg, BENT * leg])

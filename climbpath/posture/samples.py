@@ -21,7 +21,7 @@ from climbpath.posture.assembly import FIRST_JOINT, assemble, rest_points
 from climbpath.posture.batch import StanceBatch
 from climbpath.posture.com import com_of, joint_weights
 from climbpath.posture.limits import slack, tilted, upright
-from climbpath.posture.linkage import Linkage
+from climbpath.posture.linkage import LIMB_SIDE, Linkage
 from climbpath.posture.solver import Postures
 
 Array = NDArray[np.float64]
@@ -239,6 +239,7 @@ def _place(
         y = y / (share * batch.vertical[1])
         z = np.where(np.isnan(out), _nearest_out(linkage, batch, turn, y) + extra, out)
     low, high = np.full(len(y), -np.inf), np.full(len(y), np.inf)
+    low, high = _sides(linkage, batch, turn, y, z, low, high)
     centres, holes = [], []
     for limb in Limb:
         root = np.einsum("ijn,j->in", turn, linkage.roots[limb])
@@ -256,7 +257,7 @@ def _place(
         high = np.where(engaged, np.minimum(high, centre[0] + half), high)
         high = np.where(engaged & (chord < 0.0), -np.inf, high)
         centres.append(centre[0])
-        hole = np.sqrt(np.maximum(linkage.fold[limb] ** 2 - off, 0.0))
+        hole = np.sqrt(np.maximum(batch.fold[limb] ** 2 - off, 0.0))
         holes.append(np.where(engaged, hole, 0.0))
     wanted = (line_x - fixed[0]) / share
     x = np.minimum(np.maximum(wanted, low), high)
@@ -269,6 +270,32 @@ def _place(
         x = np.where(inside, np.where(to_left, left, np.where(right <= high, right, x)), x)
     miss = np.where(low <= high, np.abs(share * (x - wanted)), np.inf)
     return np.stack([np.where(np.isfinite(x), x, 0.0), y, z]), miss
+
+
+def _sides(
+    linkage: Linkage, batch: StanceBatch, turn: Array, y: Array, z: Array, low: Array, high: Array
+) -> tuple[Array, Array]:
+    """Narrow the interval of the trunk's x by the limits on crossing and standing out.
+
+    A contact's place to the side, seen from its root, falls by turn[0, 0] with each metre of x.
+    """
+    per_metre = turn[0, 0]
+    for limb in Limb:
+        engaged, side = batch.engaged[limb], LIMB_SIDE[limb]
+        target = batch.target[:, limb]
+        at_zero = turn[0, 0] * target[0] + turn[1, 0] * (target[1] - y)
+        at_zero = at_zero + turn[2, 0] * (target[2] - z) - linkage.roots[limb, 0]
+        bounds = [(-side * linkage.across[limb], side)]
+        if limb >= Limb.LF:
+            bounds.append((side * linkage.out_limit, -side))
+        for place, way in bounds:
+            # way +1: the contact must lie at ``place`` or to the right of it.
+            edge = (at_zero - place) / per_metre
+            if way > 0:
+                high = np.where(engaged, np.minimum(high, edge), high)
+            else:
+                low = np.where(engaged, np.maximum(low, edge), low)
+    return low, high
 
 
 def _nearest_out(linkage: Linkage, batch: StanceBatch, turn: Array, y: Array) -> Array:

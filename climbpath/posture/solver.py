@@ -54,13 +54,12 @@ HELD_ABOVE = 0.05
 """Multiplier above which a limit counts as holding an optimum. Where one of ``NOT_CONVEX`` does, the
 optimum may be a local one, and the stance is solved from the next start too."""
 
-FIRST_DROP = 7
 DROP_SHARE = 0.12
-"""Converged stances are dropped from this step on, whenever they make up this share."""
+"""Converged stances are dropped from the arrays whenever they make up this share."""
 
-CONVERGED = 1e-5
-"""Barrier weight under which an iteration counts as finished (the reach is then within a tenth of
-a millimetre of its optimum)."""
+CONVERGED = 5e-4
+"""Sum of slack times multiplier, m, under which an iteration counts as finished after a nearly full
+step: the reach is then within about that of its optimum."""
 
 
 @dataclass(frozen=True)
@@ -181,6 +180,7 @@ class _Run:
     shift: Array
     spare: Array
     target: Array
+    settled: NDArray[np.bool_]
     active: NDArray[np.bool_]
     slacks: Array
     multipliers: Array
@@ -188,7 +188,7 @@ class _Run:
     def keep(self, alive: Ints) -> None:
         """Drop the stances that are done."""
         self.batch = self.batch.take(alive)
-        for name in ("index", "turn", "shift", "spare", "target", "active", "slacks",
+        for name in ("index", "turn", "shift", "spare", "target", "settled", "active", "slacks",
                      "multipliers"):
             setattr(self, name, np.ascontiguousarray(getattr(self, name)[..., alive]))
 
@@ -199,7 +199,7 @@ def _evaluate(linkage: Linkage, run: _Run, layout: PointLayout) -> _State:
     points = point_limits(linkage, run.batch, run.turn, run.shift, run.spare, layout)
     value = np.empty((POINTS + len(points), run.batch.size))
     np.subtract(run.batch.reach - run.spare, geometry.distance, out=value[REACH])
-    np.subtract(geometry.distance, linkage.fold[:, None], out=value[FOLD])
+    np.subtract(geometry.distance, run.batch.fold, out=value[FOLD])
     value[HEIGHT], value[ACROSS] = joints.height, joints.across
     value[LIFT], value[OUT] = joints.lift, joints.out
     for row, limit in enumerate(points, start=POINTS):
@@ -232,26 +232,29 @@ def _descend(
     certain = np.zeros(batch.size, dtype=bool)
     none = np.zeros((0, batch.size))
     run = _Run(batch, np.arange(batch.size), turn, shift, spare, np.full(batch.size, 0.02),
-               none.astype(bool), none, none)
+               np.zeros(batch.size, dtype=bool), none.astype(bool), none, none)
     state = _evaluate(linkage, run, layout)
     run.active = _active(batch, layout, state.points)
     run.slacks = np.where(run.active, np.maximum(state.value, 0.03), 1.0)
     run.multipliers = np.where(run.active, 0.02 / run.slacks, 0.0)
+    open_ = np.ones(batch.size, dtype=bool)
     for iteration in range(1, steps + 1):
         _step(run, state)
         state = _evaluate(linkage, run, layout)
         least = np.where(run.active, state.value, np.inf).min(axis=0)
-        done = (run.target < CONVERGED) & (least > -HARD_TOLERANCE)
-        last = iteration == steps
-        if last or (iteration >= FIRST_DROP and done.mean() > DROP_SHARE):
-            held = (run.multipliers[list(NOT_CONVEX)] > HELD_ABOVE).any(axis=0)
-            gone = np.ones(len(done), dtype=bool) if last else done
-            where = run.index[gone]
-            end.turn[..., where], end.shift[:, where] = run.turn[..., gone], run.shift[:, gone]
-            certain[where] = (done & ~held)[gone]
-            if gone.all():
-                break
-            run.keep(np.flatnonzero(~gone))
+        done = run.settled & (least > -HARD_TOLERANCE)
+        # What is done is taken down at once, so that no result depends on the others in the arrays.
+        fresh = open_[run.index] & (done if iteration < steps else True)
+        where = run.index[fresh]
+        end.turn[..., where], end.shift[:, where] = run.turn[..., fresh], run.shift[:, fresh]
+        held = (run.multipliers[list(NOT_CONVEX)] > HELD_ABOVE).any(axis=0)
+        certain[where] = (done & ~held)[fresh]
+        open_[where] = False
+        if not open_.any():
+            break
+        going = open_[run.index]
+        if going.mean() < 1.0 - DROP_SHARE:
+            run.keep(np.flatnonzero(going))
             state = _evaluate(linkage, run, layout)
         # A limit that holds takes its own value as slack, so that only limits still missed
         # are approached from outside.
@@ -277,6 +280,7 @@ def _step(run: _Run, state: _State) -> None:
     total = (run.slacks * run.multipliers).sum(axis=0)
     centring = np.where(np.minimum(length, dual) > 0.7, 0.12, 0.4)
     run.target = np.maximum(centring * total / run.active.sum(axis=0), 1e-9)
+    run.settled = (total < CONVERGED) & (np.minimum(length, dual) > 0.9)
     run.turn = turned(run.turn, step[:3] * length)
     turn, move = run.turn, step[3:6] * length
     run.shift = run.shift + np.stack(
