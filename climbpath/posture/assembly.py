@@ -16,6 +16,7 @@ from climbpath.contacts import Limb
 from climbpath.posture.batch import StanceBatch
 from climbpath.posture.limits import limb_geometry
 from climbpath.posture.linkage import (
+    ANKLE_SPACE,
     ELBOW_SPACE,
     GRIP_SHARE,
     KNEE_SPACE,
@@ -167,7 +168,9 @@ def _leg(linkage: Linkage, batch: StanceBatch, joints: Array, limb: Limb, hip: A
     along = (lower**2 + linkage.shank**2 - linkage.toe**2) / (2.0 * lower)
     height = np.sqrt(np.maximum(linkage.shank**2 - along**2, 0.0))
     off = _across(_across(hip - knee, reach) * radius + 1e-4 * batch.plane[0, 0, :3], reach)
-    ankle = np.where(floor, knee + reach * linkage.shank, knee + reach * along + off * height)
+    foot = knee + reach * along
+    off = _clear(batch, foot, height, reach, off, ANKLE_SPACE)
+    ankle = np.where(floor, knee + reach * linkage.shank, foot + off * height)
     joints[first + 2] = ankle
     joints[first + 3] = np.where(floor, end, toe)
 

@@ -44,6 +44,9 @@ KNEE_SPACE = 0.04
 ELBOW_SPACE = 0.03
 """Least distance of an elbow's centre from the surface, m (from memory)."""
 
+ANKLE_SPACE = 0.02
+"""Least distance of an ankle's centre from the surface, m (from memory)."""
+
 TOE_SPACE = 0.02
 """A foot on the floor stands at least this far before the surface, m."""
 

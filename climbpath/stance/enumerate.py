@@ -21,7 +21,7 @@ from climbpath.errors import TooLargeError
 from climbpath.posture.batch import StanceBatch, stance_batch
 from climbpath.posture.linkage import Linkage
 from climbpath.posture.solver import solve_postures
-from climbpath.stance.options import ContactOptions, contact_points
+from climbpath.stance.options import HALF_FOOT_BREADTH, ContactOptions, contact_points
 
 Array = NDArray[np.float64]
 Ints = NDArray[np.int64]
@@ -114,9 +114,9 @@ class _Search:
                  missing: float, memory_bytes: float) -> None:
         self.options, self.linkage, self.allowed = options, linkage, allowed
         self.keep_above = -missing
-        # Matching moves a hand by half its breadth, so a triple may be possible where a pair on
-        # the unshared points just is not.
-        self.extend_above = -missing - linkage.hand_breadth / 2
+        # Matching moves a hand or foot by half its breadth, so a triple may be possible where a
+        # pair on the unshared points just is not.
+        self.extend_above = -missing - max(linkage.hand_breadth / 2, HALF_FOOT_BREADTH)
         self.memory_bytes = memory_bytes
         self.base = options.holds + 1  # one number more for the floor
         self.kept = 0
