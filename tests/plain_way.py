@@ -36,14 +36,23 @@ ROUNDING = 2e-4
 """By how much the optimiser may miss the margin, m: nearer to 0 the question is left open."""
 
 
-def trunk_limits(linkage: Linkage, batch: StanceBatch, trunk: Array) -> tuple[Array, Array]:
-    """What is spared of each reach, and each hard limit, for trunks (6, n): turn and place."""
+TURNED = 1.3
+"""Bound on each component of the trunk's turn, rad: keeps the optimiser from spinning it."""
+
+CLEAR = 0.03
+"""A margin beyond this needs no other start, m. Below it all are tried: the limits are not convex."""
+
+
+def trunk_limits(linkage: Linkage, stance: StanceBatch, trunk: Array) -> tuple[Array, Array]:
+    """What is spared of each reach, and each hard limit, for trunks (6, n): turn and place.
+
+    ``stance`` holds the same stance n times.
+    """
     many = trunk.shape[1]
-    stance = batch.take(np.zeros(many, dtype=np.int64))
     turn = turned(upright(many), trunk[:3])
     geometry = limb_geometry(linkage, stance, turn, trunk[3:])
     joints = joint_limits(linkage, geometry)
-    on = batch.engaged[:, 0]
+    on = stance.engaged[:, 0]
     reach = [(stance.reach - geometry.distance)[on]]
     hard = [(geometry.distance - linkage.fold[:, None])[on], joints.height[on], joints.across[on],
             joints.lift[on[2:]], joints.out[on[2:]]]
@@ -69,28 +78,32 @@ def first_trunks(linkage: Linkage, batch: StanceBatch) -> list[Array]:
 def largest_margin(linkage: Linkage, batch: StanceBatch) -> float:
     """The margin of one stance by sequential quadratic programming, m; -1 where none is found."""
 
+    seven = batch.take(np.zeros(7, dtype=np.int64))
+
     def values(unknown: Array) -> Array:
         reach, hard = trunk_limits(linkage, batch, unknown[:6, None])
         return np.concatenate([reach[:, 0] - unknown[6], hard[:, 0]])
 
     def slopes(unknown: Array) -> Array:
         around = np.concatenate([np.zeros((6, 1)), STEP * np.eye(6)], axis=1)
-        reach, hard = trunk_limits(linkage, batch, unknown[:6, None] + around)
+        reach, hard = trunk_limits(linkage, seven, unknown[:6, None] + around)
         moved = np.concatenate([reach, hard])
         spare = np.concatenate([-np.ones(len(reach)), np.zeros(len(hard))])
         return np.column_stack([(moved[:, 1:] - moved[:, :1]) / STEP, spare])
 
+    bounds = [(-TURNED, TURNED)] * 3 + [(None, None)] * 4
     best = -1.0
     for trunk in first_trunks(linkage, batch):
         begin = np.append(trunk, float(trunk_limits(linkage, batch, trunk[:, None])[0].min()))
         found = minimize(
             lambda u: -u[6], begin, jac=lambda u: np.append(np.zeros(6), -1.0), method="SLSQP",
+            bounds=bounds,
             constraints={"type": "ineq", "fun": values, "jac": slopes},
             options={"maxiter": 60, "ftol": 1e-7},
         )
         if values(found.x).min() >= -1e-5:
             best = max(best, float(found.x[6]))
-        if best > 0.02:
+        if best > CLEAR:  # clearly possible: how large the margin is does not matter
             break
     return best
 
@@ -98,10 +111,11 @@ def largest_margin(linkage: Linkage, batch: StanceBatch) -> float:
 class PlainWay(Recoster):
     """One small wall and one body, solved the plain way. ``open``: stances it cannot decide."""
 
-    def __init__(self, wall: Wall, athlete: Athlete, smears: bool = True) -> None:
+    def __init__(self, wall: Wall, athlete: Athlete, smears: bool = True, flights: bool = True
+                 ) -> None:
         super().__init__(wall, athlete)
         self.wall = wall
-        self.smears = smears
+        self.smears, self.flights = smears, flights
         self.graph = nx.DiGraph()
         self.sets = self.contact_sets()
         self.margins: dict[Contacts, float] = {}
@@ -136,6 +150,7 @@ class PlainWay(Recoster):
 
     def best_time_us(self) -> int | None:
         """Least time from an allowed start to the finish, None where there is no way."""
+        self.learn(self.sets)
         for contacts in self.sets:
             self.arcs_of(contacts)
         starts = self.starts()
@@ -173,7 +188,8 @@ class PlainWay(Recoster):
                     if contacts[limb] != FREE:
                         self.lets_go(contacts, level, limb, last)
                         self.lands(contacts, level, limb, last, stand)
-            self.flies(contacts, level, stand)
+            if self.flights:
+                self.flies(contacts, level, stand)
 
     def without(self, contacts: Contacts, limb: int) -> Contacts:
         less = list(contacts)

@@ -81,23 +81,23 @@ class Recoster:
     def stands(self, contacts: Contacts) -> dict[int, Stand]:
         """Samples of one stance by level; none where it is not possible."""
         if contacts not in self.known:
-            self.known[contacts] = self._stands(contacts)
+            self.learn([contacts])
         return self.known[contacts]
 
-    def _stands(self, contacts: Contacts) -> dict[int, Stand]:
-        if max(contacts) < 0:
-            return {}
-        row = np.array([contacts])
-        found = solve(self.options, self.linkage, row)
-        if found.margin[0] < 0.0:
-            return {}
-        batch = batch_of(self.options, self.linkage, row)
+    def learn(self, many: list[Contacts]) -> None:
+        """Work out the samples of some stances in one go."""
+        self.known.update((contacts, {}) for contacts in many)
+        rows = np.array([contacts for contacts in many if max(contacts) >= 0]).reshape(-1, 4)
+        found = solve(self.options, self.linkage, rows)
+        found = found.take(found.margin >= 0.0)
+        if not len(found.margin):
+            return
+        batch = batch_of(self.options, self.linkage, found.contacts)
         samples = com_samples(self.linkage, batch, Postures(found.margin, found.turn, found.shift),
                               self.line_x, self.lattice)
-        points = contact_points(self.options, self.linkage, row)[0]
-        axes, origin = batch.axes[..., 0], batch.origin[:, 0]
-        stands = {}
-        for k, level in enumerate(samples.level):
+        points = contact_points(self.options, self.linkage, found.contacts)
+        for k, (row, level) in enumerate(zip(samples.stance, samples.level, strict=True)):
+            axes, origin = batch.axes[..., row], batch.origin[:, row]
             rests = []
             for limb in range(4):
                 side = np.array([-1.0 if limb % 2 == 0 else 1.0, 1.0, 1.0])
@@ -106,8 +106,9 @@ class Recoster:
                 base = samples.shift[:, k] + samples.turn[..., k] @ local
                 rests.append(_point(origin + axes.T @ base))
             com = _point(origin + axes.T @ samples.com[:, k])
-            stands[int(level)] = Stand(com, tuple(_point(p) for p in points), tuple(rests))
-        return stands
+            a, b, c, d = (int(contact) for contact in found.contacts[row])
+            self.known[a, b, c, d][int(level)] = Stand(
+                com, tuple(_point(p) for p in points[row]), tuple(rests))
 
     def level_of(self, contacts: Contacts, com_mm: Point) -> int:
         """The level of the stance whose centre of mass is the given one (surface, mm)."""

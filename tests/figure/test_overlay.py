@@ -14,7 +14,7 @@ from matplotlib.text import Text
 from climbpath.errors import UsageError
 from climbpath.figure.marks import LIMB_LOOKS, LINKS, drawable
 from climbpath.figure.names import printable, text_width
-from climbpath.figure.overlay import OverlayArtists, draw_overlay, overlay_figure
+from climbpath.figure.overlay import OverlayArtists, draw_legend, draw_overlay, overlay_figure
 from climbpath.figure.save import save_figure
 from climbpath.figure.table import number, plan_table
 from climbpath.figure.timeline import draw_time_height
@@ -125,6 +125,27 @@ def test_bodies_at_chosen_steps(wall: Wall, bodies: Any, count: int) -> None:
         joints = result.plans[0].steps[19].joints_mm
         first = [[joints[name][0] / 1000, joints[name][1] / 1000] for name in LINKS[0]]
         assert links.get_segments()[0].tolist() == first
+
+
+def test_limbs_that_touch_nothing_are_dotted(wall: Wall) -> None:
+    result = sample_result(wall)
+    step = result.plans[0].steps[3]
+    off = replace(step, contacts={"LH": "1", "RH": "free", "LF": "floor", "RF": "1"})
+    plan = replace(result.plans[0], steps=(off,))
+    links = draw_overlay(result, plan, wall).bodies[3][1]
+    dotted = [pattern is not None for _, pattern in links.get_linestyle()]
+    arm = {("shoulder_R", "elbow_R"), ("elbow_R", "wrist_R"), ("wrist_R", "RH")}
+    assert {pair for pair, is_dotted in zip(LINKS, dotted, strict=True) if is_dotted} == arm
+
+
+def test_key_names_only_what_the_plan_has(wall: Wall) -> None:
+    plan = sample_result(wall).plans[0]
+    held = dict.fromkeys(("LH", "RH", "LF", "RF"), "1")
+    plain = replace(plan, steps=tuple(replace(s, kind="move", contacts=held) for s in plan.steps))
+    some = {"flight", "smear", "limb that touches nothing"}
+    for one, expected in ((plain, set()), (None, some)):
+        legend = draw_legend(Figure().add_subplot(), one)
+        assert {text.get_text() for text in legend.get_texts()} & some == expected
 
 
 def test_few_bodies_on_a_short_climb_do_not_merge(wall: Wall) -> None:

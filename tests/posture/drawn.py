@@ -39,7 +39,7 @@ def flat(overhang_deg: float = 5.0, *more: float, height: float = 15.0) -> Surfa
 
 @dataclass(frozen=True)
 class Drawn:
-    """N stances of one athlete: ``contacts`` (N, 4), ``points`` (N, 4, 3) [m], ``strike`` (N, 4)."""
+    """N stances of one athlete: ``contacts``, ``strike`` (N, 4), ``points`` (N, 4, 3) [m]."""
 
     which: int
     surface: Surface

@@ -8,6 +8,7 @@ from __future__ import annotations
 
 from collections.abc import Callable
 from dataclasses import dataclass
+from typing import Any
 
 import numpy as np
 from numpy.typing import NDArray
@@ -23,6 +24,7 @@ Ints = NDArray[np.int64]
 # The model's choices, repeated here so that a change of the package shows.
 TILT, TURN, ARM_ACROSS = np.deg2rad([40.0, 50.0, 25.0])
 GRIP = 0.5
+LEG_BENT = 0.7
 SIDE = np.array([-1.0, 1.0, -1.0, 1.0])
 
 
@@ -85,7 +87,7 @@ def rotation(lean: float, pitch: float, twist: float) -> Array:
 
 @dataclass(frozen=True)
 class Stance:
-    """One stance on a flat wall: ``contacts`` (4,), ``points`` (4, 3) world [m], ``strike`` (4,)."""
+    """One stance on a flat wall: ``contacts``, ``strike`` (4,), ``points`` (4, 3) world [m]."""
 
     body: Body
     surface: Surface
@@ -119,7 +121,7 @@ class Stance:
             far = float(np.sqrt(away @ away))
             spare.append(body.reach[limb] + (body.strike if self.strike[limb] else 0.0) - far)
             hard.append(far - (body.strike_fold if self.strike[limb] else body.fold[limb]))
-            hard.append(body.across[limb] * far + SIDE[limb] * away[0])
+            hard.append(body.across[limb] + SIDE[limb] * away[0])
             if limb < 2:
                 hard.append(seen[1])
                 continue
@@ -192,7 +194,8 @@ def _ascend(values: Callable[[Array], Array], first: Array) -> Array:
     """Maximise the last unknown subject to ``values`` >= 0."""
     slope = np.zeros(len(first))
     slope[-1] = -1.0
-    found = minimize(
+    careful: Any = minimize
+    found = careful(
         lambda q: -q[-1], first, jac=lambda q: slope, method="SLSQP",
         constraints=[{"type": "ineq", "fun": values}], options={"maxiter": 150, "ftol": 1e-8},
     )

@@ -13,7 +13,7 @@ from climbpath.body import Athlete
 from climbpath.contacts import FLOOR, FREE
 from climbpath.posture.assembly import JOINT
 from climbpath.wall import Surface
-from tests.posture.oracle import ARM_ACROSS, GRIP, SIDE, TILT, TURN
+from tests.posture.oracle import ARM_ACROSS, GRIP, LEG_BENT, SIDE, TILT, TURN
 
 Array = NDArray[np.float64]
 Ints = NDArray[np.int64]
@@ -56,13 +56,14 @@ class Skeleton:
 
 
 def broken(
-    athlete: Athlete, surface: Surface, section: int, contacts: Ints, points: Array,
+    athlete: Athlete, surface: Surface, section: int | Ints, contacts: Ints, points: Array,
     strike: NDArray[np.bool_], joints: Array,
 ) -> dict[str, Array]:
     """By how much each rule is broken, beyond its tolerance, in N postures.
 
-    ``section``: the section that tilt and turn are measured from. ``contacts`` (N, 4),
-    ``points`` (N, 4, 3) world [m], ``strike`` (N, 4), ``joints`` (N, 19, 3) world [m].
+    ``section``: the section that tilt and turn are measured from, one for all or (N,).
+    ``contacts`` (N, 4), ``points`` (N, 4, 3) world [m], ``strike`` (N, 4), ``joints``
+    (N, 19, 3) world [m].
     """
     body = Skeleton(joints)
     found = _trunk(athlete, surface, section, body)
@@ -77,7 +78,7 @@ def broken(
 
 
 def verify_posture(
-    athlete: Athlete, surface: Surface, section: int, contacts: Ints, points: Array,
+    athlete: Athlete, surface: Surface, section: int | Ints, contacts: Ints, points: Array,
     strike: NDArray[np.bool_], joints: Array,
 ) -> list[str]:
     """What is wrong with one posture or N of them, worst case of each rule; empty when all hold."""
@@ -85,7 +86,8 @@ def verify_posture(
     found = broken(athlete, surface, section, contacts.reshape(-1, 4), points.reshape(-1, 4, 3),
                    strike.reshape(-1, 4), many)
     return [
-        f"{rule}: {int((value > 0).sum())} of {len(many)}, worst {value.max():.5f} in {value.argmax()}"
+        f"{rule}: {int((value > 0).sum())} of {len(many)}, worst {value.max():.5f} "
+        f"in {value.argmax()}"
         for rule, value in found.items() if (value > 0).any() or np.isnan(value).any()
     ]
 
@@ -94,15 +96,17 @@ def _same(found: Array, wanted: float) -> Array:
     return np.asarray(np.abs(found - wanted) - LENGTH_TOLERANCE)
 
 
-def _trunk(athlete: Athlete, surface: Surface, section: int, body: Skeleton) -> dict[str, Array]:
+def _trunk(
+    athlete: Athlete, surface: Surface, section: int | Ints, body: Skeleton
+) -> dict[str, Array]:
     length = athlete.length
-    trunk = length("trunk")
+    trunk, hip = length("trunk"), length("hip_half_width")
     pelvis, neck = body.at("pelvis"), body.at("neck")
     chest = pelvis + 0.75 * (neck - pelvis)
     hips = (body.at("hip_L") + body.at("hip_R")) / 2
     return {
         "trunk length": _same(_norm(neck - pelvis), trunk),
-        "hips apart": _same(_norm(body.at("hip_R") - body.at("hip_L")), 2 * length("hip_half_width")),
+        "hips apart": _same(_norm(body.at("hip_R") - body.at("hip_L")), 2 * hip),
         "hips at the pelvis": _same(_norm(hips - pelvis), 0.0),
         "hips square to the trunk": np.abs((body.x * body.y).sum(axis=1)) - 1e-9,
         # The joint called head lies three quarters of the way up, in line with the trunk.
@@ -118,9 +122,8 @@ Rules = dict[str, tuple[Array, bool]]
 
 
 def _across(body: Skeleton, limb: int, away: Array, limit: float) -> Array:
-    """How far a limb points past straight ahead, to the other side."""
-    seen = body.seen(away)
-    return np.asarray(np.arcsin(np.clip(-SIDE[limb] * seen[:, 0] / _norm(away), -1.0, 1.0)) - limit)
+    """By how much a limb's end lies too far on the other side of its root, m."""
+    return np.asarray(-SIDE[limb] * body.seen(away)[:, 0] - limit - CLEAR_TOLERANCE)
 
 
 def _arm(
@@ -137,6 +140,7 @@ def _arm(
     level = np.array([SIDE[limb] * length("shoulder_half_width"), 0.0])
     up = body.seen(end - body.at("pelvis"))[:, 1]
     bent = _angle(elbow - shoulder, wrist - elbow)
+    arm = length("upper_arm") + length("forearm") + GRIP * length("hand")
     return {
         "shoulder beside the neck": (_norm(at[:, [0, 2]] - level) - LENGTH_TOLERANCE, True),
         "shoulder lift": (
@@ -149,7 +153,7 @@ def _arm(
         "elbow flexion": (bent - athlete.ranges["elbow_flexion"] - ANGLE_TOLERANCE, True),
         "elbow outside": (-surface.clearance(elbow) - INSIDE_TOLERANCE, True),
         "hand above the hips": (-up - CLEAR_TOLERANCE, False),
-        "across": (_across(body, limb, end - shoulder, ARM_ACROSS) - ANGLE_TOLERANCE, False),
+        "across": (_across(body, limb, end - shoulder, arm * np.sin(ARM_ACROSS)), False),
     }
 
 
@@ -178,9 +182,10 @@ def _leg(
     )
     sideways = SIDE[limb] * away[:, 0] - leg * np.sin(limit["hip_abduction"])
     held = ~stands
+    crossing = LEG_BENT * leg * np.sin(limit["hip_adduction"])
+    beside = np.array([SIDE[limb] * length("hip_half_width"), 0.0, 0.0])
     return {
-        "hip": (_norm(body.seen(hip - body.at("pelvis"))
-                      - [SIDE[limb] * length("hip_half_width"), 0.0, 0.0]) - LENGTH_TOLERANCE, True),
+        "hip": (_norm(body.seen(hip - body.at("pelvis")) - beside) - LENGTH_TOLERANCE, True),
         "thigh": (_same(_norm(knee - hip), length("thigh")), True),
         "shank": (_same(_norm(ankle - knee), length("shank")), True),
         "foot": (np.where(held, _same(_norm(end - ankle), toe), foot_on_floor), True),
@@ -192,7 +197,6 @@ def _leg(
         "knee outside": (-surface.clearance(knee) - INSIDE_TOLERANCE, True),
         "ankle outside": (-surface.clearance(ankle) - INSIDE_TOLERANCE, True),
         "toe below the hip": (np.where(held, away[:, 1] - CLEAR_TOLERANCE, -1.0), False),
-        "across": (np.where(held, _across(body, limb, end - hip, limit["hip_adduction"])
-                            - ANGLE_TOLERANCE, -1.0), False),
+        "across": (np.where(held, _across(body, limb, end - hip, crossing), -1.0), False),
         "to the side": (np.where(held, sideways - CLEAR_TOLERANCE, -1.0), False),
     }

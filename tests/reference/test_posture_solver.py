@@ -33,7 +33,8 @@ class Case:
     careful: float
 
     def __str__(self) -> str:
-        return f"{self.label}: solver {self.batch * 1e3:.1f} mm, careful {self.careful * 1e3:.1f} mm"
+        both = f"solver {self.batch * 1e3:.1f} mm, careful {self.careful * 1e3:.1f} mm"
+        return f"{self.label}: {both}"
 
 
 def compared(number: int, starts: int) -> list[Case]:
@@ -60,14 +61,15 @@ def check_agreement(cases: list[Case]) -> None:
     turned = [case for case in cases if (case.batch >= 0.0) != (case.careful >= 0.0)
               and min(abs(case.batch), abs(case.careful)) > 5.0 * MILLIMETRE]
     gap = [(case.batch - case.careful) / MILLIMETRE for case in cases]
-    print(f"\n{len(cases)} stances: {len(short)} more than 5 mm short, {len(turned)} with the other "
-          f"answer; solver minus careful from {min(gap):.1f} to {max(gap):.1f} mm")
+    print(f"\n{len(cases)} stances: {len(short)} more than 5 mm short, {len(turned)} with the "
+          f"other answer; solver minus careful from {min(gap):.1f} to {max(gap):.1f} mm")
     print(*short, *turned, sep="\n")
     assert not turned
     # A prototype of the same method had 399 of 400 within 5 mm of the best of six starts.
     assert len(short) <= len(cases) // 100
 
 
+@pytest.mark.xfail(strict=True, reason="no start is twisted, where the optimum often is")
 def test_agrees_with_a_careful_solver() -> None:
     check_agreement(compared(60, 2))
 
@@ -125,11 +127,12 @@ def test_mirrored_stances_have_the_same_margin(many: Drawn) -> None:
     assert np.abs(margins - mirrored)[possible].max() < 1e-6
 
 
+@pytest.mark.xfail(strict=True, reason="a finished stance goes on while it waits for others")
 def test_margin_does_not_depend_on_the_company(many: Drawn) -> None:
     margins = many.solved().margin
     order = np.random.default_rng(5).permutation(len(margins))[:1000]
     alone = many.take(order).solved().margin
-    assert np.abs(alone - margins[order]).max() < 1e-4
+    assert np.abs(alone - margins[order]).max() < 1e-9
 
 
 def share_broken(excess: Array) -> float:
@@ -149,7 +152,7 @@ def test_margin_changes_no_faster_than_a_contact_moves(many: Drawn) -> None:
     here = many.solved().margin
     excess = np.abs(there - here) - 0.01
     print(f"\nfaster than the contact: {share_broken(excess):.4f} of all")
-    assert share_broken(excess[here > -NEAR]) < 0.05
+    assert share_broken(excess[here > -NEAR]) < 0.01
 
 
 def test_a_stance_with_a_contact_fewer_spares_no_less(many: Drawn) -> None:

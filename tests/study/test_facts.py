@@ -1,0 +1,309 @@
+"""Facts that must come out of every plan and need no forces, on small made-up walls.
+
+Each is about the lattice time, exact on the graph, so equal means equal to 0.02 ms and never
+worse means not by a microsecond.
+"""
+
+from __future__ import annotations
+
+from dataclasses import replace
+
+import numpy as np
+import pytest
+
+from climbpath.study.climb import LATTICE_STEP, Conditions
+from climbpath.study.plan import PlanRequest, trade_off_points
+from climbpath.study.results import Plan
+from climbpath.study.sequence import format_plan, parse_sequences
+from climbpath.wall import Wall
+from climbpath.wall.files import format_wall, parse_wall
+from climbpath.wall.mirror import mirror
+from climbpath.wall.model import Hold
+from tests.study.solved import SAME_US, best, best_us, climb, plans, recoster
+from tests.walls_made import ladder, small_wall
+
+AIMS = ("time", "straight", "both", "narrow")
+SEEDS = [0, *(pytest.param(seed, marks=pytest.mark.slow) for seed in range(1, 8))]
+"""Seeds of the small walls; all but one are slow, only because there are many."""
+
+ROUNDING_PER_STEP = 4
+"""Units (mm ms) by which a step's area may differ: each of its arcs is rounded by itself."""
+
+
+def request(aim: str = "time", **conditions: object) -> PlanRequest:
+    return PlanRequest(aim=aim, conditions=Conditions(**conditions))  # type: ignore[arg-type]
+
+
+def with_hold(wall: Wall, hold: Hold) -> Wall:
+    return replace(wall, holds=(*wall.holds, hold))
+
+
+def area(plan: Plan) -> int:
+    return round(plan.lateral_area_mm_s * 1e3)
+
+
+@pytest.mark.parametrize("aim", AIMS)
+def test_a_ladder_gives_a_straight_line(aim: str) -> None:
+    found = best(ladder(4), request(aim))
+    assert found.lateral_mean_mm < 2.0
+    assert found.lateral_max_mm < 5.0
+    assert found.sideways_mm < 10.0
+
+
+@pytest.mark.parametrize("seed", SEEDS)
+@pytest.mark.parametrize(
+    "added",
+    [Hold("new", 1.05, 1.95), Hold("new", 1.9, 2.6, use="hand"), Hold("new", 1.5, 1.0, use="foot")],
+    ids=["beside", "above", "for feet"],
+)
+def test_one_more_hold_never_costs_time(seed: int, added: Hold) -> None:
+    wall = small_wall(seed)
+    gap = min(np.hypot(hold.x - added.x, hold.y - added.y) for hold in wall.holds)
+    if gap < 0.05:
+        pytest.skip("the new hold would lie on another")
+    assert best_us(with_hold(wall, added)) <= best_us(wall)
+
+
+@pytest.mark.parametrize("seed", SEEDS)
+def test_a_hold_that_is_avoided_might_as_well_not_be_there(seed: int) -> None:
+    wall = small_wall(seed)
+    more = with_hold(wall, Hold("new", 1.25, 2.0))
+    avoided = best_us(more, request(avoid=("new",)))
+    assert abs(avoided - best_us(wall)) <= SAME_US
+
+
+@pytest.mark.parametrize("seed", SEEDS)
+@pytest.mark.parametrize("aim", AIMS)
+def test_a_mirrored_wall_costs_the_same(seed: int, aim: str) -> None:
+    wall = small_wall(seed)
+    there, back = best(wall, request(aim)), best(mirror(wall), request(aim))
+    if aim != "narrow":
+        assert abs(area(there) - area(back)) <= ROUNDING_PER_STEP * len(there.steps)
+    if aim in ("time", "both"):
+        assert abs(there.time_s - back.time_s) * 1e6 <= SAME_US
+    assert there.lateral_max_mm == pytest.approx(back.lateral_max_mm, abs=0.01) or aim != "narrow"
+
+
+@pytest.mark.parametrize("seed", SEEDS)
+def test_a_mirrored_plan_costs_the_same(seed: int) -> None:
+    """The best of the mirrored wall, its steps mirrored back, re-costs to the same."""
+    wall = small_wall(seed)
+    turned = mirror(wall)
+    back = best(turned)
+    swap = {"LH": "RH", "RH": "LH", "LF": "RF", "RF": "LF"}
+    steps = tuple(
+        replace(
+            step,
+            moved=tuple(swap[limb] for limb in step.moved),
+            contacts={swap[limb]: contact for limb, contact in step.contacts.items()},
+            com_mm=(wall.width * 1e3 - step.com_mm[0], step.com_mm[1], step.com_mm[2]),
+        )
+        for step in back.steps
+    )
+    again = recoster(wall).plan(replace(back, steps=steps))
+    assert abs(again.time_us - round(back.time_s * 1e6)) <= SAME_US
+
+
+@pytest.mark.parametrize("seed", SEEDS)
+def test_unit_order_and_shift_change_nothing(seed: int) -> None:
+    wall = small_wall(seed)
+    alike = {
+        "read from its own file": parse_wall(format_wall(wall), "mm"),
+        "in cm": parse_wall(format_wall(replace(wall, unit="cm")), "cm"),
+        "holds reversed": replace(wall, holds=wall.holds[::-1]),
+    }
+    for what, other in alike.items():
+        assert abs(best_us(other) - best_us(wall)) <= SAME_US, what
+
+
+@pytest.mark.parametrize("seed", SEEDS)
+@pytest.mark.parametrize("aside", [0.25, -0.333333])
+def test_a_shift_changes_nothing(seed: int, aside: float) -> None:
+    wall = small_wall(seed)
+    moved = replace(
+        wall, width=wall.width + 2 * abs(aside), line_x=wall.line_x + aside,
+        holds=tuple(replace(hold, x=round(hold.x + aside, 6)) for hold in wall.holds),
+    )
+    assert abs(best_us(moved) - best_us(wall)) <= SAME_US
+
+
+@pytest.mark.parametrize("seed", SEEDS)
+def test_hold_names_change_nothing(seed: int) -> None:
+    wall = small_wall(seed)
+    names = {hold.id: f"z{99 - k}" for k, hold in enumerate(wall.holds)}
+    renamed = replace(
+        wall, holds=tuple(replace(hold, id=names[hold.id]) for hold in wall.holds),
+        starts=tuple(
+            replace(start, allowed=tuple(tuple(names.get(n, n) for n in row)
+                                         for row in start.allowed))
+            for start in wall.starts
+        ),
+        finish=tuple(names[name] for name in wall.finish),
+    )
+    there, back = best(wall), best(renamed)
+    assert there.time_s == back.time_s
+    assert [{k: names.get(v, v) for k, v in step.contacts.items()} for step in there.steps] == [
+        dict(step.contacts) for step in back.steps
+    ]
+
+
+@pytest.mark.parametrize("seed", SEEDS)
+def test_a_finer_lattice_contains_the_coarser(seed: int) -> None:
+    wall = small_wall(seed)
+    coarse = climb(wall).search.stances
+    fine = climb(wall, step=LATTICE_STEP / 2).search.stances
+    assert np.array_equal(coarse.contacts, fine.contacts)
+    places = {(int(stance), int(level)): com for stance, level, com
+              in zip(fine.sample_stance, fine.level, fine.com, strict=True)}
+    lost = [
+        (stance, level)
+        for stance, level, com in zip(coarse.sample_stance, coarse.level, coarse.com, strict=True)
+        if (stance, 2 * level) not in places
+        or np.abs(places[int(stance), 2 * int(level)] - com).max() > 1e-6
+    ]
+    assert not lost, f"{len(lost)} of {coarse.samples} samples are missing on the finer lattice"
+
+
+@pytest.mark.xfail(
+    reason="the x of the samples depends on the line: 0.3 m aside changes times by up to 0.36 s, "
+    "the lattice error is 0.001 to 0.06 s", raises=AssertionError,
+)
+@pytest.mark.parametrize("aside", [0.05, 0.3])
+def test_moving_the_line_changes_the_best_time_by_the_lattice_error(aside: float) -> None:
+    worst = 0.0
+    for seed in (0, 3):
+        wall = small_wall(seed)
+        error = abs(best_us(wall, PlanRequest(step=LATTICE_STEP / 2)) - best_us(wall))
+        moved = best_us(replace(wall, line_x=wall.line_x + aside))
+        worst = max(worst, abs(moved - best_us(wall)) - error)
+    assert worst <= SAME_US
+
+
+@pytest.mark.parametrize("seed", SEEDS)
+def test_a_finer_lattice_never_costs_time(seed: int) -> None:
+    wall = small_wall(seed)
+    finer = best_us(wall, PlanRequest(step=LATTICE_STEP / 2))
+    assert finer <= best_us(wall)
+
+
+@pytest.mark.parametrize("seed", SEEDS)
+@pytest.mark.parametrize("aim", ["time", "both", "narrow"])
+def test_a_plan_recosts_to_its_own_time(seed: int, aim: str) -> None:
+    """Step by step to 1 us, from contacts and centre of mass alone (``tests/recost.py``)."""
+    wall = small_wall(seed)
+    for found in plans(wall, PlanRequest(aim=aim, alternatives=2)):
+        again = recoster(wall).plan(found)
+        if aim == "time":
+            told = [round(step.time_s * 1e6) for step in found.steps]
+            assert np.abs(np.diff(again.clock_us) - np.diff(told)).max() <= 1
+            assert abs(again.time_us - round(found.lattice_time_s * 1e6)) <= len(told)
+            assert abs(again.area - area(found)) <= ROUNDING_PER_STEP * len(told)
+        else:
+            # Another aim may pick an order that takes longer, never one that takes less.
+            assert again.time_us <= round(found.lattice_time_s * 1e6) + len(found.steps)
+
+
+@pytest.mark.parametrize("seed", SEEDS)
+def test_a_straight_plan_recosts_to_its_own_area(seed: int) -> None:
+    wall = small_wall(seed)
+    found = best(wall, request("straight"))
+    again = recoster(wall).plan(found, area_first=True)
+    assert abs(again.area - area(found)) <= ROUNDING_PER_STEP * len(found.steps)
+
+
+@pytest.mark.parametrize("seed", SEEDS)
+def test_every_aim_is_best_at_what_it_aims_at(seed: int) -> None:
+    wall = small_wall(seed)
+    found = {aim: best(wall, request(aim)) for aim in AIMS}
+    for other in found.values():
+        assert found["time"].time_s <= other.time_s
+        assert area(found["straight"]) <= area(other)
+        assert found["narrow"].lateral_max_mm <= other.lateral_max_mm + 1e-9
+        both = [p.time_s * 1e6 + p.lateral_area_mm_s * 1e3 for p in (found["both"], other)]
+        assert both[0] <= both[1] + 1e-3
+    for weight, aim in ((0.0, "time"), (1000.0, "straight")):
+        weighted = best(wall, PlanRequest(aim="both", line_weight=weight))
+        if aim == "time":
+            assert weighted.lattice_time_s == found["time"].lattice_time_s
+        else:
+            # 1000 s per m s: whatever time can be saved is worth less than 1 mm s per second.
+            spare = (weighted.time_s - found["straight"].time_s) / weight * 1e6
+            assert area(weighted) <= area(found["straight"]) + abs(spare) + 1
+
+
+@pytest.mark.parametrize("seed", SEEDS)
+def test_trade_offs_run_from_the_fastest_to_the_straightest(seed: int) -> None:
+    wall = small_wall(seed)
+    points = trade_off_points(climb(wall), PlanRequest(trade_off=True))
+    fast, straight = best(wall), best(wall, request("straight"))
+    assert points[0][:2] == (fast.lattice_time_s, fast.lateral_area_mm_s)
+    assert points[-1][1] == straight.lateral_area_mm_s
+    assert points[-1][0] == straight.lattice_time_s
+    times, areas = [p[0] for p in points], [p[1] for p in points]
+    assert times == sorted(set(times))
+    assert areas == sorted(set(areas), reverse=True)
+    slopes = np.diff(areas) / np.diff(times)
+    assert (np.diff(slopes) > 0.0).all()  # supported points are the corners of a convex curve
+
+
+@pytest.mark.parametrize("seed", SEEDS)
+@pytest.mark.parametrize("share", [0.2, 0.5])
+def test_alternatives_differ_by_the_share(seed: int, share: float) -> None:
+    found = plans(small_wall(seed, 9, 4.5), PlanRequest(alternatives=3, difference=share))
+    # So few holds need not have sequences that differ in half of them.
+    assert len(found) > 1 or share > 0.2
+    assert [p.time_s for p in found] == sorted(p.time_s for p in found)
+    for k, plan in enumerate(found):
+        for better in found[:k]:
+            one, other = set(plan.hand_holds), set(better.hand_holds)
+            assert 1.0 - len(one & other) / len(one | other) >= share - 1e-12
+
+
+def hands_on(plan: Plan) -> set[tuple[str, str]]:
+    return {(limb, step.contacts[limb]) for step in plan.steps for limb in ("LH", "RH")}
+
+
+@pytest.mark.parametrize("seed", SEEDS)
+def test_conditions_hold_and_never_save_time(seed: int) -> None:
+    wall = small_wall(seed)
+    free = best(wall)
+    used = [hold for hold in free.hand_holds[1:] if hold != "pad"]
+    spared = [hold.id for hold in wall.holds
+              if hold.use == "both" and hold.id not in free.hand_holds]
+    asked = [
+        request(avoid=tuple(used[:1])), request(include=tuple(spared[:1])),
+        request(hands=(("LH", used[0]),)), request(hands=(("RH", used[0]),)),
+        request(flights=False), request(matching=False), request(smears=False),
+    ]
+    for wanted in asked:
+        found = plans(wall, wanted)
+        if not found:
+            continue
+        plan, conditions = found[0], wanted.conditions
+        assert plan.lattice_time_s >= free.lattice_time_s, conditions
+        contacts = [step.contacts for step in plan.steps]
+        touched = {contact for row in contacts for contact in row.values()}
+        assert not touched & set(conditions.avoid)
+        assert set(conditions.include) <= touched
+        assert set(conditions.hands) <= hands_on(plan)
+        if not conditions.flights:
+            assert "flight" not in [step.kind for step in plan.steps]
+        if not conditions.smears:
+            assert "smear" not in touched
+        if not conditions.matching:
+            # The start is the wall's own: what it allows there is judged apart.
+            for row in contacts:
+                assert row["LH"] != row["RH"] or row["LH"] == "free"
+                assert row["LF"] != row["RF"] or row["LF"] in ("free", "floor", "smear")
+
+
+@pytest.mark.parametrize("seed", SEEDS)
+def test_a_plan_read_back_as_an_opening_gives_itself(seed: int) -> None:
+    wall = small_wall(seed)
+    free = best(wall)
+    opening = parse_sequences(format_plan(free), "plan.csv")[0]
+    again = best(wall, request(opening=opening))
+    assert again.lattice_time_s == free.lattice_time_s
+    assert [(s.moved, dict(s.contacts), s.time_s) for s in again.steps] == [
+        (s.moved, dict(s.contacts), s.time_s) for s in free.steps
+    ]
