@@ -9,6 +9,7 @@ points are the program's own.
 from __future__ import annotations
 
 from itertools import product
+from typing import Any
 
 import networkx as nx
 import numpy as np
@@ -40,7 +41,7 @@ TURNED = 1.3
 """Bound on each component of the trunk's turn, rad: keeps the optimiser from spinning it."""
 
 CLEAR = 0.03
-"""A margin beyond this needs no other start, m. Below it all are tried: the limits are not convex."""
+"""A margin beyond this needs no other start, m; below it all are tried, for want of convexity."""
 
 
 def trunk_limits(linkage: Linkage, stance: StanceBatch, trunk: Array) -> tuple[Array, Array]:
@@ -95,7 +96,8 @@ def largest_margin(linkage: Linkage, batch: StanceBatch) -> float:
     best = -1.0
     for trunk in first_trunks(linkage, batch):
         begin = np.append(trunk, float(trunk_limits(linkage, batch, trunk[:, None])[0].min()))
-        found = minimize(
+        solver: Any = minimize
+        found = solver(
             lambda u: -u[6], begin, jac=lambda u: np.append(np.zeros(6), -1.0), method="SLSQP",
             bounds=bounds,
             constraints={"type": "ineq", "fun": values, "jac": slopes},

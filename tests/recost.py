@@ -19,11 +19,13 @@ Definitions (docstrings of ``motion/model.py``, ``route/build.py`` and ``route/n
 
 from __future__ import annotations
 
+from collections.abc import Mapping
 from dataclasses import dataclass
 from itertools import permutations
 from math import hypot, sqrt
 
 import numpy as np
+from numpy.typing import NDArray
 
 from climbpath.body import Athlete
 from climbpath.contacts import CONTACT_CODES, FLOOR, FREE, LIMB_NAMES, SMEAR
@@ -77,6 +79,7 @@ class Recoster:
         anchor = min(float(self.options.point[self.options.index(name), 1]) for name in starts)
         self.lattice = Lattice(anchor, step)
         self.known: dict[Contacts, dict[int, Stand]] = {}
+        self.area_first = False
 
     def stands(self, contacts: Contacts) -> dict[int, Stand]:
         """Samples of one stance by level; none where it is not possible."""
@@ -185,7 +188,8 @@ class Recoster:
                 here = less
             else:
                 support = here
-                best = cost if best is None else min(best, cost)
+                if best is None or self.key(cost) < self.key(best):
+                    best = cost
         return {} if best is None else {support: best}
 
     def joint(self, here: Contacts, goal: Contacts, level: int, limbs: tuple[int, ...], last: int,
@@ -225,7 +229,7 @@ class Recoster:
                               self.reach(here, first, stand), self.motion.least_step)
                 cost = self.cost(seconds, left.com[0], stand.com[0], begun)
                 now = first + 1 if first < 2 else last
-                _keep(found, self.joint(here, after, high, order[1:], now, cost))
+                self.keep(found, self.joint(here, after, high, order[1:], now, cost))
         return found
 
     def flight(self, before: Contacts, low: int, after: Contacts, high: int) -> dict[int, Cost]:
@@ -254,11 +258,12 @@ class Recoster:
             middle = round(off / FLIGHT_BIN) * FLIGHT_BIN
             seconds = motion.take_off_speed / GRAVITY + motion.settle
             cost = self.cost(seconds, middle + self.line_x, stand.com[0], begun)
-            _keep(found, self.joint(here, after, high, order[1:], order[0] + 1, cost))
+            self.keep(found, self.joint(here, after, high, order[1:], order[0] + 1, cost))
         return found
 
     def plan(self, plan: Plan, area_first: bool = False) -> Recosted:
         """Least cost of the plan's steps: time then area, or area then time."""
+        self.area_first = area_first
         first, *others = plan.steps
         before = self.codes(first.contacts)
         low = self.level_of(before, first.com_mm)
@@ -275,35 +280,32 @@ class Recoster:
                     before, low, after, high, moved, last)
                 if step.kind in ("flight", "finish"):
                     for now, more in self.flight(before, low, after, high).items():
-                        _keep(ways, (more, now))
+                        self.keep(ways, (more, now))
                 for now, more in ways.items():
                     total = cost[0] + more[0], cost[1] + more[1]
                     new = total, (*clock, total[0])
-                    if now not in following or _key(new[0], area_first) < _key(
-                            following[now][0], area_first):
+                    if now not in following or self.key(total) < self.key(following[now][0]):
                         following[now] = new
             if not following:
                 raise AssertionError(f"step {step.step} is no move: {before} to {after}")
             states, before, low = following, after, high
-        cost, clock = min(states.values(), key=lambda s: _key(s[0], area_first))
+        cost, clock = min(states.values(), key=lambda state: self.key(state[0]))
         return Recosted(cost[0], cost[1], clock)
 
-    def codes(self, contacts: dict[str, str] | object) -> Contacts:
+    def key(self, cost: Cost) -> Cost:
+        """What ways are compared by."""
+        return (cost[1], cost[0]) if self.area_first else cost
+
+    def keep(self, found: dict[int, Cost], new: tuple[Cost, int] | None) -> None:
+        """Keep the cheapest way for each hand that moved last."""
+        if new is not None and (new[1] not in found or self.key(new[0]) < self.key(found[new[1]])):
+            found[new[1]] = new[0]
+
+    def codes(self, names: Mapping[str, str]) -> Contacts:
         """Contact codes of a step's contacts by name."""
-        names: dict[str, str] = dict(contacts)  # type: ignore[call-overload]
         a, b, c, d = (CONTACT_CODES[names[limb]] if names[limb] in CONTACT_CODES
                       else self.options.index(names[limb]) for limb in LIMB_NAMES)
         return a, b, c, d
-
-
-def _key(cost: Cost, area_first: bool) -> Cost:
-    return (cost[1], cost[0]) if area_first else cost
-
-
-def _keep(found: dict[int, Cost], new: tuple[Cost, int] | None) -> None:
-    """Keep the cheapest way for each hand that moved last."""
-    if new is not None and (new[1] not in found or new[0] < found[new[1]]):
-        found[new[1]] = new[0]
 
 
 def _feet_on(contacts: Contacts) -> bool:
@@ -317,7 +319,7 @@ def _with(contacts: Contacts, limb: int, contact: int) -> Contacts:
     return a, b, c, d
 
 
-def _point(values: np.ndarray) -> Point:
+def _point(values: NDArray[np.float64]) -> Point:
     return float(values[0]), float(values[1]), float(values[2])
 
 

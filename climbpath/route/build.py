@@ -3,7 +3,8 @@
 A move is: limbs let go (each release an arc of no time to the stance that is left, its support),
 one limb lands (an arc from a sample of the support to a sample of the landing stance, as long as
 the larger of travel and reach), and others may land with it (arcs that add only what their reach
-takes beyond the least step). So any limbs may move together while arcs run only between a stance
+takes beyond the least step). A move ends with a hand on a hold: nothing here looks at forces, and
+none but a hand keeps a body from tipping off the wall. So any limbs may move together while arcs run only between a stance
 and its supports: their number grows with those links, never with pairs of stances.
 """
 
@@ -222,7 +223,7 @@ class _Builder:
     def moves(self, limb: int) -> _Arcs:
         """A limb lands: from samples of the support to samples of the landing stance."""
         stances = self.stances
-        landing = np.flatnonzero(stances.support[:, limb] >= 0)
+        landing = np.flatnonzero((stances.support[:, limb] >= 0) & (self.hands > 0))
         support = stances.support[landing, limb]
         row, start = _ragged(stances.first_sample[support], self.number[support])
         pair, end = _ragged(stances.first_sample[landing][row], self.number[landing][row])
@@ -243,6 +244,8 @@ class _Builder:
     def joint_landings(self, limb: int) -> _Arcs:
         """A free limb lands with the move that has just ended: only what its reach adds."""
         end, start = self._same_level(limb)
+        held = self.hands[self.stances.sample_stance[end]] > 0
+        end, start = end[held], start[held]
         extra = np.maximum(self._reach(limb, end) - self.motion.least_step, 0.0)
         time = np.maximum(extra, self._shift(start, end, self.stances.sample_stance[start]))
         off = mean_distance(self.off[start], self.off[end])

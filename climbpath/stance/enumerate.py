@@ -132,7 +132,14 @@ class _Search:
         tables = [self._table(rows) for rows in possible[len(single):]]
         pairs: dict[Limbs, Relation] = dict(zip(both, tables, strict=True))
         three: list[Limbs] = list(combinations(Limb, 3))
-        grown = [(limbs, rows) for limbs in three for rows in self._triples(limbs, pairs)]
+        grown: list[tuple[Limbs, Ints]] = []
+        formed = 0
+        for limbs in three:
+            self._foresee(limbs, pairs)
+            for rows in self._triples(limbs, pairs):
+                grown.append((limbs, rows))
+                formed += len(rows)
+                self._guard(formed)
         found, possible = self._solved(grown)
         parts.append(found)
         triples: dict[Limbs, Ints] = {}
@@ -230,6 +237,19 @@ class _Search:
                 f"{needed / 1e9:.1f} GB, with {self.memory_bytes / 1e9:.1f} GB to use. Fewer holds "
                 "(--avoid, or one lane of the wall), --no-smears or --no-matching would reduce it."
             )
+
+    def _foresee(self, three: Limbs, pairs: dict[Limbs, Relation]) -> None:
+        """Guess from a few rows how many triples there will be, before any is formed."""
+        a, b, c = three
+        rows = np.argwhere(pairs[a, b][0])
+        _, starts, _ = pairs[b, c]
+        number = starts[rows[:, 1] + 1] - starts[rows[:, 1]]
+        some = rows[:: max(1, len(rows) // 2000)]
+        tried, kept = 0, 0
+        for part in self._grown(some, *pairs[b, c][1:]):
+            tried += len(part)
+            kept += int(pairs[a, c][0][part[:, 0], part[:, 2]].sum())
+        self._guard(int(number.sum() * kept / max(tried, 1)))
 
     def _table(self, rows: Ints) -> Relation:
         """A pair relation: membership matrix, and its rows as starts and ends."""

@@ -15,6 +15,7 @@ from pathlib import Path
 
 import numpy as np
 import pytest
+from numpy.typing import NDArray
 
 from climbpath.motion.model import PacedMotion
 from climbpath.posture.linkage import linkage_of
@@ -41,7 +42,7 @@ TALL = ((31, 15.0), (62, 30.0), (124, 60.0))
 """Holds and height [m]: more holds on one lane, and the same density on taller walls."""
 
 
-def stances_of(wall: Wall, number: int) -> tuple[np.ndarray, int]:
+def stances_of(wall: Wall, number: int) -> tuple[NDArray[np.int64], int]:
     """Contacts (number, 4) of possible stances of a wall, repeated where it has fewer."""
     options, linkage = contact_options(wall), linkage_of(athlete())
     found = all_stances(options, linkage, Allowed())
@@ -156,4 +157,5 @@ def test_against_the_plain_way() -> None:
     seconds = time.perf_counter() - begin
     own = round(result.plans[0].time_s * 1e6) if result.plans else None
     print(f"\nplain way, {len(wall.holds)} holds, {len(plain.sets)} contact sets: {seconds:.1f} s "
-          f"against {program:.2f} s, ratio {seconds / program:.0f} (best times {least} and {own} us)")
+          f"against {program:.2f} s, ratio {seconds / program:.0f}, "
+          f"best times {least} and {own} us")

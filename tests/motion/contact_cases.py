@@ -6,7 +6,7 @@ from dataclasses import dataclass
 
 import numpy as np
 from numpy.typing import NDArray
-from scipy.optimize import linprog, minimize
+from scipy.optimize import Bounds, LinearConstraint, linprog, minimize
 
 from climbpath.motion.cones import cone_rays
 from climbpath.motion.load import Held
@@ -94,6 +94,7 @@ def least_load_by_highs(held: Held, need: Array, k: int) -> float:
     if found.status == 2:
         return float("inf")
     assert found.status == 0, found.message
+    assert found.fun is not None
     return float(found.fun)
 
 
@@ -110,13 +111,19 @@ def limb_loads_by_slsqp(held: Held, need: Array, k: int) -> tuple[Array, float, 
     bound[one.limbs :, -1] = np.concatenate([held.turn[k], held.turn[k]])
     squared = np.zeros(size)
     squared[cut + 3 :] = 1.0
+
+    def half_sum(x: Array) -> float:
+        return 0.5 * float(squared @ x**2)
+
+    def slope(x: Array) -> Array:
+        return squared * x
+
+    start = np.full(size, 0.1)
     found = minimize(
-        lambda x: 0.5 * float(squared @ x**2), np.full(size, 0.1), jac=lambda x: squared * x,
-        method="SLSQP", bounds=[(0.0, None)] * cut + [(None, None)] * (size - cut),
-        constraints=[
-            {"type": "eq", "fun": lambda x: one.equal @ x - one.wanted, "jac": lambda x: one.equal},
-            {"type": "ineq", "fun": lambda x: bound @ x, "jac": lambda x: bound},
-        ],
+        half_sum, start, method="SLSQP", jac=slope,
+        bounds=Bounds(np.where(np.arange(size) < cut, 0.0, -np.inf), np.full(size, np.inf)),
+        constraints=[LinearConstraint(one.equal, one.wanted, one.wanted),
+                     LinearConstraint(bound, 0.0, np.inf)],
         options={"maxiter": 500, "ftol": 1e-14},
     )
     return found.x[cut + 3 :], float(found.fun), bool(found.success)

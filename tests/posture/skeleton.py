@@ -180,6 +180,7 @@ def _leg(
         length("shank") ** 2 + toe**2
         - 2 * length("shank") * toe * np.cos(rest + limit["ankle_plantarflexion"])
     )
+    flexed = _angle(knee - hip, -body.y) - limit["hip_flexion"] - ANGLE_TOLERANCE
     sideways = SIDE[limb] * away[:, 0] - leg * np.sin(limit["hip_abduction"])
     held = ~stands
     crossing = LEG_BENT * leg * np.sin(limit["hip_adduction"])
@@ -193,7 +194,8 @@ def _leg(
         "knee flexion": (
             _angle(knee - hip, ankle - knee) - limit["knee_flexion"] - ANGLE_TOLERANCE, True),
         "ankle range": (np.where(held, hinge - ANGLE_TOLERANCE, -1.0), True),
-        "hip flexion": (_angle(knee - hip, -body.y) - limit["hip_flexion"] - ANGLE_TOLERANCE, True),
+        "hip flexion": (np.where(held, flexed, -1.0), True),
+        "thigh on the floor": (np.where(held, -1.0, flexed), True),
         "knee outside": (-surface.clearance(knee) - INSIDE_TOLERANCE, True),
         "ankle outside": (-surface.clearance(ankle) - INSIDE_TOLERANCE, True),
         "toe below the hip": (np.where(held, away[:, 1] - CLEAR_TOLERANCE, -1.0), False),

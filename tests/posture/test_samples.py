@@ -29,7 +29,7 @@ Array = NDArray[np.float64]
 
 LATTICE = Lattice(1.0, 0.15)
 LINE = 1.5
-KNOWN = ("elbow flexion", "knee flexion", "elbow outside")
+KNOWN = ("elbow flexion", "knee flexion", "elbow outside", "thigh on the floor")
 
 
 @dataclass(frozen=True)

@@ -17,31 +17,34 @@ Body = tuple[str, float]
 MAN: Body = ("male", 1.79)
 WOMAN: Body = ("female", 1.66)
 
+FREELY = Conditions()
+FASTEST = PlanRequest()
+
 SAME_US = 20
 """Best times that must be equal are equal to 0.02 ms."""
 
 
 @lru_cache(maxsize=64)
-def climb(wall: Wall, conditions: Conditions = Conditions(), step: float = LATTICE_STEP,
+def climb(wall: Wall, conditions: Conditions = FREELY, step: float = LATTICE_STEP,
           body: Body = MAN) -> Climb:
     """The search of one wall and body."""
     return prepare(wall, athlete(*body), conditions, step=step)
 
 
 @lru_cache(maxsize=256)
-def plans(wall: Wall, request: PlanRequest = PlanRequest(), body: Body = MAN) -> tuple[Plan, ...]:
+def plans(wall: Wall, request: PlanRequest = FASTEST, body: Body = MAN) -> tuple[Plan, ...]:
     """What ``plan`` would return, from a search that is made once for all aims."""
     ready = climb(wall, request.conditions, request.step, body)
     return tuple(plan_of(ready, best.route, rank)
                  for rank, best in enumerate(plan_routes(ready, request), start=1))
 
 
-def best(wall: Wall, request: PlanRequest = PlanRequest(), body: Body = MAN) -> Plan:
+def best(wall: Wall, request: PlanRequest = FASTEST, body: Body = MAN) -> Plan:
     """The first plan; there must be one."""
     return plans(wall, request, body)[0]
 
 
-def best_us(wall: Wall, request: PlanRequest = PlanRequest(), body: Body = MAN) -> int:
+def best_us(wall: Wall, request: PlanRequest = FASTEST, body: Body = MAN) -> int:
     """Its lattice time, us."""
     return round(best(wall, request, body).lattice_time_s * 1e6)
 
