@@ -51,8 +51,8 @@ HARD_TOLERANCE = 1e-4
 """How far a hard limit may be missed by rounding of the iteration, m."""
 
 HELD_ABOVE = 0.05
-"""Multiplier above which a limit counts as holding an optimum. Where one of ``NOT_CONVEX`` does, the
-optimum may be a local one, and the stance is solved from the next start too."""
+"""Multiplier above which a limit counts as holding an optimum. Where one of ``NOT_CONVEX`` does,
+the optimum may be a local one, and the stance is solved from the next start too."""
 
 DROP_SHARE = 0.12
 """Converged stances are dropped from the arrays whenever they make up this share."""

@@ -8,7 +8,7 @@ rules out, and nothing that two far-apart stances would need is ever formed.
 
 from __future__ import annotations
 
-from collections.abc import Iterator
+from collections.abc import Callable, Iterator
 from dataclasses import dataclass
 from itertools import combinations
 
@@ -127,6 +127,7 @@ class _Search:
         both: list[Limbs] = list(combinations(Limb, 2))
         single: list[tuple[Limbs, Ints]] = [((limb,), choices[limb][:, None]) for limb in Limb]
         double = [(pair, self._near(choices, pair)) for pair in both]
+        self._foresee(double)
         found, possible = self._solved([*single, *double])
         parts = [found]
         tables = [self._table(rows) for rows in possible[len(single):]]
@@ -135,7 +136,6 @@ class _Search:
         grown: list[tuple[Limbs, Ints]] = []
         formed = 0
         for limbs in three:
-            self._foresee(limbs, pairs)
             for rows in self._triples(limbs, pairs):
                 grown.append((limbs, rows))
                 formed += len(rows)
@@ -149,6 +149,8 @@ class _Search:
                  *(r for (own, _), r in zip(grown, possible, strict=True) if own == limbs)]
             )
             triples[limbs] = rows[np.argsort(self._key(rows))]
+        self._guard(self._expected(triples[Limb.LH, Limb.RH, Limb.LF], pairs[Limb.LF, Limb.RF],
+                                   lambda rows: self._whole(rows, pairs, triples)))
         parts += [self._solved([(tuple(Limb), rows)])[0] for rows in self._quads(pairs, triples)]
         return parts
 
@@ -238,18 +240,33 @@ class _Search:
                 "(--avoid, or one lane of the wall), --no-smears or --no-matching would reduce it."
             )
 
-    def _foresee(self, three: Limbs, pairs: dict[Limbs, Relation]) -> None:
-        """Guess from a few rows how many triples there will be, before any is formed."""
-        a, b, c = three
-        rows = np.argwhere(pairs[a, b][0])
-        _, starts, _ = pairs[b, c]
-        number = starts[rows[:, 1] + 1] - starts[rows[:, 1]]
-        some = rows[:: max(1, len(rows) // 2000)]
-        tried, kept = 0, 0
-        for part in self._grown(some, *pairs[b, c][1:]):
+    def _foresee(self, double: list[tuple[Limbs, Ints]]) -> None:
+        """Guess from some of the pairs how many triples there will be, before all are solved."""
+        tables, shares = {}, []
+        for pair, rows in double:
+            tables[pair] = self._table(rows)
+            some = rows[:: max(1, len(rows) // 200)]
+            contacts = np.full((len(some), 4), FREE, dtype=np.int64)
+            contacts[:, list(pair)] = np.where(some == self.options.holds, FLOOR, some)
+            margin = solve(self.options, self.linkage, contacts).margin
+            shares.append(float((margin >= self.keep_above).mean()) if len(margin) else 0.0)
+        hands, feet = (Limb.LH, Limb.RH), (Limb.RH, Limb.LF)
+        outer = tables[Limb.LH, Limb.LF][0]
+        near = self._expected(np.argwhere(tables[hands][0]), tables[feet],
+                              lambda rows: rows[outer[rows[:, 0], rows[:, 2]]])
+        self._guard(int(4 * near * float(np.mean(shares)) ** 3))
+
+    def _expected(
+        self, rows: Ints, partners: Relation, kept: Callable[[Ints], Ints]
+    ) -> int:
+        """About how many rows ``kept`` leaves of all ``rows`` grown by their partners."""
+        _, starts, ends = partners
+        number = starts[rows[:, -1] + 1] - starts[rows[:, -1]]
+        tried, left = 0, 0
+        for part in self._grown(rows[:: max(1, len(rows) // 2000)], starts, ends):
             tried += len(part)
-            kept += int(pairs[a, c][0][part[:, 0], part[:, 2]].sum())
-        self._guard(int(number.sum() * kept / max(tried, 1)))
+            left += len(kept(part))
+        return int(number.sum() * left / max(tried, 1))
 
     def _table(self, rows: Ints) -> Relation:
         """A pair relation: membership matrix, and its rows as starts and ends."""
@@ -292,15 +309,19 @@ class _Search:
     def _quads(self, pairs: dict[Limbs, Relation], triples: dict[Limbs, Ints]) -> Iterator[Ints]:
         rows = triples[Limb.LH, Limb.RH, Limb.LF]
         _, starts, ends = pairs[Limb.LF, Limb.RF]
-        keys = {three: self._key(found) for three, found in triples.items()}
         for grown in self._grown(rows, starts, ends):
-            kept = grown
-            for limb in (Limb.LH, Limb.RH):
-                kept = kept[pairs[limb, Limb.RF][0][kept[:, limb], kept[:, 3]]]
-            for three in ((0, 1, 3), (0, 2, 3), (1, 2, 3)):
-                known = keys[Limb(three[0]), Limb(three[1]), Limb(three[2])]
-                kept = kept[_member(known, self._key(kept[:, three]))]
-            yield kept
+            yield self._whole(grown, pairs, triples)
+
+    def _whole(
+        self, rows: Ints, pairs: dict[Limbs, Relation], triples: dict[Limbs, Ints]
+    ) -> Ints:
+        """Those of full stances (M, 4) whose pairs and triples are all possible."""
+        for limb in (Limb.LH, Limb.RH):
+            rows = rows[pairs[limb, Limb.RF][0][rows[:, limb], rows[:, 3]]]
+        for three in ((0, 1, 3), (0, 2, 3), (1, 2, 3)):
+            known = self._key(triples[Limb(three[0]), Limb(three[1]), Limb(three[2])])
+            rows = rows[_member(known, self._key(rows[:, three]))]
+        return rows
 
 
 def _member(known: Ints, wanted: Ints) -> Flags:

@@ -8,6 +8,9 @@ import numpy as np
 from numpy.typing import NDArray
 
 from climbpath.contacts import FLOOR, FREE, LIMB_NAMES, Limb
+from climbpath.motion.capacity import capacities_of
+from climbpath.motion.cones import hold_cones
+from climbpath.motion.rest import rest_loads
 from climbpath.posture.assembly import JOINTS, assemble
 from climbpath.route.nodes import LANDED, PHASES
 from climbpath.route.shortest import Route
@@ -96,7 +99,7 @@ def plan_of(climb: Climb, route: Route, rank: int) -> Plan:
         hand_moves=len(events),
         hand_holds=_hand_holds(steps),
         margin_min_mm=min(margins) if margins else None,
-        load_max=None,
+        load_max=_finite(max(np.inf if s.load is None else s.load for s in steps)),
         steps=steps,
     )
 
@@ -136,6 +139,11 @@ def _steps(climb: Climb, legs: list[Leg], samples: list[int], clock: list[int]
     surface = climb.options.surface
     placed = surface.to_surface(world) * 1e3
     com = surface.to_surface(stances.com[index]) * 1e3
+    loads = rest_loads(
+        climb.options, hold_cones(climb.wall, climb.options), climb.linkage,
+        capacities_of(climb.athlete), stances.contacts[owner], stances.points[owner], world,
+        stances.com[index],
+    )
     points = surface.to_surface(stances.points[owner]) * 1e3
     steps = []
     for k, sample in enumerate(samples):
@@ -169,11 +177,18 @@ def _steps(climb: Climb, legs: list[Leg], samples: list[int], clock: list[int]
             com_mm=_point(com[k]),
             joints_mm={name: _point(placed[k, j]) for j, name in enumerate(JOINTS)},
             speed_m_s=speed,
-            margin_mm=float(stances.margin[owner[k]]) * 1e3,
-            load=None,
-            load_by_limb={},
+            margin_mm=None if kind == "flight" else float(stances.margin[owner[k]]) * 1e3,
+            load=_finite(loads.load[k]),
+            load_by_limb={
+                LIMB_NAMES[limb]: float(loads.by_limb[k, limb]) for limb in Limb
+                if contacts[limb] != FREE and np.isfinite(loads.by_limb[k, limb])
+            },
         ))
     return tuple(steps)
+
+
+def _finite(value: float) -> float | None:
+    return float(value) if np.isfinite(value) else None
 
 
 def _point(values: Array) -> Point3:

@@ -38,6 +38,13 @@ DIFFERENCE = 0.2
 """Share of the hand holds in which an alternative differs from each better one."""
 
 MAX_SOLVES = 60
+
+PACING_CAUTION = (
+    "Times follow a simple pacing rule and look at no force. Loads are those of holding each "
+    "position still: above 1, or where none is given, a position cannot be held but only passed "
+    "through, if at all."
+)
+
 FALSE_START = 0.100
 
 
@@ -190,8 +197,7 @@ def plan(
              *athlete.cautions]
     if any(p.pad_off_s is not None and p.pad_off_s < FALSE_START for p in plans):
         notes.append(FALSE_START_CAUTION)
-    notes.append("Times follow a simple pacing rule and look at no force: a sequence may need "
-                 "more strength than the athlete has.")
+    notes.append(PACING_CAUTION)
     return PlanResult(
         wall_name=wall.name, athlete_name=athlete.name, line_x_mm=wall.line_x * 1e3, aim=asked.aim,
         cautions=cautions_for(*notes), plans=plans, trade_off=trade_off, why_not=why,

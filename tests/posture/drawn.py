@@ -120,5 +120,5 @@ def joints_in_world(stances: Drawn, postures: Postures, index: Ints) -> Array:
 
 def sections_of(stances: Drawn, batch: StanceBatch) -> Ints:
     """The section whose axes each stance is solved in, (N,)."""
-    along = np.einsum("in,ki->nk", batch.axes[:, 1], stances.surface.up)
+    along = np.einsum("jn,kj->nk", batch.axes[1], stances.surface.up)
     return np.asarray(along.argmax(axis=1))

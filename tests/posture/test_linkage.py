@@ -69,7 +69,6 @@ def test_fold_of_arms(athlete: Athlete, linkage: Linkage) -> None:
     assert linkage.fold[:2] == pytest.approx([fold, fold])
 
 
-@pytest.mark.xfail(strict=True, reason="the fold takes the line knee to toe for the shank")
 @BODIES
 def test_fold_of_legs(athlete: Athlete, linkage: Linkage) -> None:
     # With the shank straight down, a thigh at full knee flexion rises behind it: the heel comes

