@@ -33,6 +33,9 @@ Relation = tuple[Flags, Ints, Ints]
 BLOCK = 1_000_000
 """Candidates formed at a time."""
 
+FEW_PAIRS = 30_000
+"""With fewer pairs of contacts than this, no wall is too dense for any machine."""
+
 BYTES_PER_STANCE = 1500
 """What a stance with its posture, samples and links takes, measured."""
 
@@ -242,6 +245,8 @@ class _Search:
 
     def _foresee(self, double: list[tuple[Limbs, Ints]]) -> None:
         """Guess from some of the pairs how many triples there will be, before all are solved."""
+        if sum(len(rows) for _, rows in double) < FEW_PAIRS:
+            return
         tables, shares = {}, []
         for pair, rows in double:
             tables[pair] = self._table(rows)
