@@ -39,9 +39,6 @@ Ints = NDArray[np.int64]
 CHUNK = 4096
 """Stances solved together: arrays of this length stay in the processor's cache."""
 
-STEPS = (20, 26, 30)
-"""Newton steps from the first, second and third start."""
-
 DAMPING = (0.1, 0.01)
 DAMPING_PER_TARGET = (1000.0, 100.0)
 """Added to the curvature over turn and shift, constant and per unit of the barrier's weight:
@@ -56,6 +53,9 @@ the optimum may be a local one, and the stance is solved from the next start too
 
 DROP_SHARE = 0.12
 """Converged stances are dropped from the arrays whenever they make up this share."""
+
+SETTLED = 1e-4
+"""A full step gains less reach than this, m, once an iteration is finished."""
 
 CONVERGED = 5e-4
 """Sum of slack times multiplier, m, under which an iteration counts as finished after a nearly full
@@ -75,39 +75,69 @@ class Postures:
     shift: Array
 
 
+@dataclass(frozen=True)
+class _Round:
+    """Starts made together, and for whom: doubtful stances whose margin (m) is between two bounds.
+
+    ``out`` [m]: distance off the wall; ``lean``: from the feet to the hands; ``twists`` [rad]:
+    one start each, against the way the first posture turned out to be twisted (negative: the same
+    way).
+    """
+
+    steps: int
+    above: float
+    below: float
+    out: float
+    lean: bool
+    twists: tuple[float, ...]
+
+
+ROUNDS = (
+    _Round(20, -np.inf, np.inf, 0.30, False, (0.0,)),
+    _Round(26, -np.inf, np.inf, 0.30, False, (0.7, -0.7)),
+    _Round(30, -0.08, 0.02, 0.05, True, (0.7, -0.7)),
+)
+"""The optimum often lies at the turn limit, and a valley leads there from either side only."""
+
+
 def solve_postures(linkage: Linkage, batch: StanceBatch) -> Postures:
     """Largest spare reach of N stances. Every stance has at least one engaged or floor limb."""
     count = batch.size
-    margin = np.empty(count)
-    turn = np.empty((3, 3, count))
-    shift = np.empty((3, count))
-    for begin in range(0, count, CHUNK):
-        part = slice(begin, min(begin + CHUNK, count))
-        found = _solve_chunk(linkage, batch.take(part))
-        margin[part], turn[..., part], shift[..., part] = found.margin, found.turn, found.shift
-    return Postures(margin, turn, shift)
-
-
-def _solve_chunk(linkage: Linkage, batch: StanceBatch) -> Postures:
-    best, finished = _descend(linkage, batch, *_start(linkage, batch, 0), STEPS[0])
-    for attempt in range(1, len(STEPS)):
-        doubtful = np.flatnonzero(~finished)
-        if not len(doubtful):
-            break
-        again = batch.take(doubtful)
-        start = _start(linkage, again, attempt)
-        found, done = _descend(linkage, again, *start, STEPS[attempt])
-        finished[doubtful] |= done
-        better = found.margin > best.margin[doubtful]
-        where = doubtful[better]
-        best.margin[where] = found.margin[better]
-        best.turn[..., where] = found.turn[..., better]
-        best.shift[..., where] = found.shift[..., better]
+    best = Postures(np.full(count, -np.inf), upright(count), np.zeros((3, count)))
+    certain = np.zeros(count, dtype=bool)
+    side = np.ones(count)
+    for number, starts in enumerate(ROUNDS):
+        chosen = ~certain & (best.margin >= starts.above) & (best.margin < starts.below)
+        index = np.flatnonzero(chosen | (number == 0))
+        # The few that are tried again are gathered first, so that arrays stay long.
+        tried = np.tile(index, len(starts.twists))
+        twist = np.repeat(starts.twists, len(index))
+        for begin in range(0, len(tried), CHUNK):
+            part = slice(begin, begin + CHUNK)
+            own = batch.take(tried[part])
+            turn, shift = _start(linkage, own, starts, twist[part] * side[tried[part]])
+            found, done = _descend(linkage, own, turn, shift, starts.steps)
+            _improve(best, found, tried[part])
+            certain[tried[part][done]] = True
+        if number == 0:
+            side = np.where(best.turn[0, 2] >= 0.0, -1.0, 1.0)
     return best
 
 
-def _start(linkage: Linkage, batch: StanceBatch, attempt: int) -> tuple[Array, Array]:
-    """A trunk between the contacts: upright; then leaning from feet to hands; then farther out."""
+def _improve(best: Postures, found: Postures, where: Ints) -> None:
+    """Take over what is better; a stance may stand in ``where`` more than once."""
+    order = np.argsort(found.margin, kind="stable")
+    order = order[found.margin[order] > best.margin[where[order]]]
+    # With repeated places the last assignment stays, which is the largest margin.
+    best.margin[where[order]] = found.margin[order]
+    best.turn[..., where[order]] = found.turn[..., order]
+    best.shift[:, where[order]] = found.shift[:, order]
+
+
+def _start(
+    linkage: Linkage, batch: StanceBatch, start: _Round, twist: Array
+) -> tuple[Array, Array]:
+    """A trunk between the contacts, upright or leaning from feet to hands, and twisted."""
     count = batch.size
     engaged = batch.engaged.astype(float)
     hang = linkage.trunk + 0.6 * linkage.reach[0]
@@ -118,20 +148,22 @@ def _start(linkage: Linkage, batch: StanceBatch, attempt: int) -> tuple[Array, A
     shift[0] = (batch.target[0] * engaged).sum(axis=0) / total
     shift[1] = ((batch.target[1] + offset) * engaged).sum(axis=0) / total
     out = (batch.target[2] * engaged).sum(axis=0) / total
-    shift[2] = np.maximum(out, 0.0) + linkage.pelvis_space + (0.08, 0.05, 0.30)[attempt]
+    shift[2] = np.maximum(out, 0.0) + linkage.pelvis_space + start.out
     on_floor = batch.floor.any(axis=0)
     level = batch.floor_level + 0.9 * linkage.floor_reach
     stood = (level - batch.vertical[2] * shift[2]) / batch.vertical[1]
     shift[1] = np.where(on_floor, stood, shift[1])
-    turn = upright(count)
-    if attempt == 1:
+    lean = np.zeros(count)
+    if start.lean:
         # Lean the shoulders toward the middle of the hands, hips toward that of the feet.
         hands = _mean_x(batch, slice(0, 2), shift[0])
         feet = _mean_x(batch, slice(2, 4), shift[0])
-        angle = np.clip(np.arctan2(hands - feet, 1.6 * linkage.trunk), -0.7, 0.7)
-        turn[0, 0], turn[0, 1], turn[1, 0] = np.cos(angle), np.sin(angle), -np.sin(angle)
-        turn[1, 1] = np.cos(angle)
+        lean = np.clip(np.arctan2(hands - feet, 1.6 * linkage.trunk), -0.7, 0.7)
         shift[1] -= 0.15
+    cl, sl = np.cos(lean), np.sin(lean)
+    ct, st = np.cos(twist), np.sin(twist)
+    zero = np.zeros(count)
+    turn = np.array([[cl * ct, sl, cl * st], [-sl * ct, cl, -sl * st], [-st, zero, ct]])
     return turn, shift
 
 
@@ -281,6 +313,7 @@ def _step(run: _Run, state: _State) -> None:
     centring = np.where(np.minimum(length, dual) > 0.7, 0.12, 0.4)
     run.target = np.maximum(centring * total / run.active.sum(axis=0), 1e-9)
     run.settled = (total < CONVERGED) & (np.minimum(length, dual) > 0.9)
+    run.settled &= np.abs(step[6]) < SETTLED
     run.turn = turned(run.turn, step[:3] * length)
     turn, move = run.turn, step[3:6] * length
     run.shift = run.shift + np.stack(
