@@ -8,7 +8,7 @@ points are the program's own.
 
 from __future__ import annotations
 
-from itertools import product
+from itertools import combinations, product
 from typing import Any
 
 import networkx as nx
@@ -64,7 +64,7 @@ def trunk_limits(linkage: Linkage, stance: StanceBatch, trunk: Array) -> tuple[A
 
 
 def first_trunks(linkage: Linkage, batch: StanceBatch) -> list[Array]:
-    """Trunks to begin from (6,): under the hands and over the feet, near and farther out."""
+    """Trunks to begin from (6,): under the hands and over the feet; upright, turned, far."""
     hang, stand = linkage.trunk + 0.6 * linkage.reach[0], 0.75 * linkage.reach[2]
     places = [batch.target[:, limb, 0] - [0.0, hang if limb < 2 else -stand, 0.0]
               for limb in range(4) if batch.engaged[limb, 0]]
@@ -72,12 +72,26 @@ def first_trunks(linkage: Linkage, batch: StanceBatch) -> list[Array]:
     if batch.floor[:, 0].any():
         middle[1] = batch.floor_level[0] + 0.9 * linkage.floor_reach
     return [np.concatenate([turn, [middle[0], middle[1], out]])
-            for turn, out in (((0.0, 0.0, 0.0), 0.25), ((0.0, 0.0, 0.4), 0.25),
-                              ((0.0, 0.0, -0.4), 0.25), ((0.3, 0.0, 0.0), 0.45))]
+            for turn, out in (((0.0, 0.0, 0.0), 0.25), ((0.0, 0.7, 0.0), 0.30),
+                              ((0.0, -0.7, 0.0), 0.30), ((0.3, 0.0, 0.0), 0.45),
+                              ((0.0, 0.0, 0.4), 0.25), ((0.0, 0.0, -0.4), 0.25))]
+
+
+def too_far_apart(linkage: Linkage, batch: StanceBatch) -> bool:
+    """Whether two contacts are farther from each other than limbs and trunk are long together."""
+    rise = np.array([linkage.shoulder_rise, linkage.shoulder_rise, 0.0, 0.0])
+    length = batch.reach[:, 0] + rise
+    for a, b in combinations(np.flatnonzero(batch.engaged[:, 0]), 2):
+        apart = np.linalg.norm(batch.target[:, a, 0] - batch.target[:, b, 0])
+        if apart > length[a] + length[b] + np.linalg.norm(linkage.roots[a] - linkage.roots[b]):
+            return True
+    return False
 
 
 def largest_margin(linkage: Linkage, batch: StanceBatch) -> float:
     """The margin of one stance by sequential quadratic programming, m; -1 where none is found."""
+    if too_far_apart(linkage, batch):
+        return -1.0
 
     seven = batch.take(np.zeros(7, dtype=np.int64))
 

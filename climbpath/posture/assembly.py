@@ -96,6 +96,19 @@ def _off_wall(batch: StanceBatch, point: Array, space: float) -> Array:
     return np.asarray(normal * np.maximum(space - gap, 0.0))
 
 
+def _nearest_plane(batch: StanceBatch, limb: Limb, point: Array) -> tuple[Array, Array]:
+    """Normal (3, N) and distance (N,) of the plane that bounds a limb at a point.
+
+    Of the pelvis' plane and that of the limb's contact: in a hollow the nearer, at an edge that
+    juts out the one there is more room before.
+    """
+    own, other = batch.plane[0, 0], batch.limb_plane[:, limb]
+    first = (own[:3] * point).sum(axis=0) + own[3]
+    second = (other[:3] * point).sum(axis=0) + other[3]
+    use = (second < first) == batch.hollow[limb]
+    return np.where(use, other[:3], own[:3]), np.where(use, second, first)
+
+
 def _below(batch: StanceBatch, point: Array) -> Array:
     """The ground point vertically under each point. Shape (3, N) [m]."""
     height = (batch.vertical * point).sum(axis=0) - batch.floor_level
@@ -134,7 +147,8 @@ def _arm(
     fore = linkage.forearm + GRIP_SHARE * linkage.hand + strike
     way = (ELBOW_WAY * [LIMB_SIDE[limb], 1.0, 1.0])[:, None] + np.zeros_like(shoulder)
     centre, radius, axis = _middle(shoulder, end, linkage.upper_arm, fore)
-    elbow = centre + radius * _clear(batch, centre, radius, axis, _across(way, axis), ELBOW_SPACE)
+    way = _clear(batch, limb, centre, radius, axis, _across(way, axis), ELBOW_SPACE)
+    elbow = centre + radius * way
     joints[first] = shoulder
     joints[first + 1] = elbow
     direction = _unit(end - elbow)
@@ -158,7 +172,8 @@ def _leg(linkage: Linkage, batch: StanceBatch, joints: Array, limb: Limb, hip: A
     lower = np.where(floor, linkage.shank, lower_leg(linkage, distance))
     way = (KNEE_WAY * [LIMB_SIDE[limb], 1.0, 1.0])[:, None] + np.zeros_like(hip)
     centre, radius, axis = _middle(hip, goal, linkage.thigh, lower)
-    knee = centre + radius * _clear(batch, centre, radius, axis, _across(way, axis), KNEE_SPACE)
+    way = _clear(batch, limb, centre, radius, axis, _across(way, axis), KNEE_SPACE)
+    knee = centre + radius * way
     joints[first] = hip
     joints[first + 1] = knee
     reach = _unit(goal - knee)
@@ -169,22 +184,22 @@ def _leg(linkage: Linkage, batch: StanceBatch, joints: Array, limb: Limb, hip: A
     height = np.sqrt(np.maximum(linkage.shank**2 - along**2, 0.0))
     off = _across(_across(hip - knee, reach) * radius + 1e-4 * batch.plane[0, 0, :3], reach)
     foot = knee + reach * along
-    off = _clear(batch, foot, height, reach, off, ANKLE_SPACE)
+    off = _clear(batch, limb, foot, height, reach, off, ANKLE_SPACE)
     ankle = np.where(floor, knee + reach * linkage.shank, foot + off * height)
     joints[first + 2] = ankle
     joints[first + 3] = np.where(floor, end, toe)
 
 
 def _clear(
-    batch: StanceBatch, centre: Array, radius: Array, axis: Array, way: Array, space: float
+    batch: StanceBatch, limb: Limb, centre: Array, radius: Array, axis: Array, way: Array,
+    space: float,
 ) -> Array:
     """Turn a middle joint about its circle just far enough to keep it ``space`` off the wall.
 
     Returns the unit direction (3, N) from the circle's centre. If the preferred direction stands
     too near the wall, the part along the most outward direction is raised to what is needed.
     """
-    normal, offset = batch.plane[0, 0, :3], batch.plane[0, 0, 3]
-    gap = (normal * centre).sum(axis=0) + offset
+    normal, gap = _nearest_plane(batch, limb, centre)
     outward = _across(normal, axis)
     steep = np.maximum((normal * outward).sum(axis=0), 1e-6)
     needed = np.clip((space - gap) / np.maximum(radius * steep, 1e-9), -1.0, 1.0)

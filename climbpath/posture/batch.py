@@ -29,6 +29,8 @@ class StanceBatch:
     ``out`` (3, N): world axis out of the wall; ``floor_out`` (N,) [m]: where along it the surface
     meets the ground. ``plane`` (2, 2, 4, N):
     for pelvis and chest two planes each, normal and offset, that the point must stay clear of.
+    ``limb_plane`` (4, 4, N): the plane of the section each contact lies on (the pelvis' for a limb
+    without one); ``hollow`` (4, N) bool: it and the pelvis' plane meet in a hollow.
     ``origin`` (3, N), ``axes`` (3, 3, N): base axes in the world (rows right, up, out).
     """
 
@@ -42,6 +44,8 @@ class StanceBatch:
     out: Array
     floor_out: Array
     plane: Array
+    limb_plane: Array
+    hollow: NDArray[np.bool_]
     origin: Array
     axes: Array
 
@@ -109,6 +113,13 @@ def stance_batch(
     moved = np.moveaxis(safe, (0, 1, 2), (2, 1, 0)) - origin_first[:, None, :]
     target = np.einsum("ijn,jln->iln", axes_first, moved)
     vertical = np.ascontiguousarray(axes_first[:, 1, :])
+    where = surface.section_at(surface.to_surface(safe)[..., 1] - 1e-9)
+    where = np.where(engaged, where, home[:, None])
+    lean = surface.overhang
+    upper, lower = np.maximum(where, home[:, None]), np.minimum(where, home[:, None])
+    limb_plane = np.stack(
+        [_plane(surface, where[:, limb], axes_first, origin_first) for limb in range(4)], axis=1
+    )
     return StanceBatch(
         target=np.ascontiguousarray(target),
         engaged=np.ascontiguousarray(engaged.T),
@@ -120,6 +131,8 @@ def stance_batch(
         out=np.ascontiguousarray(axes_first[:, 2, :]),
         floor_out=meets - origin_first[2],
         plane=_planes(linkage, surface, home, along, axes_first, origin_first),
+        limb_plane=limb_plane,
+        hollow=np.ascontiguousarray((lean[upper] >= lean[lower]).T),
         origin=origin_first,
         axes=axes_first,
     )
@@ -145,9 +158,13 @@ def _planes(
         other = np.where(lean[above] > lean[own], above, own)
         other = np.where((lean[below] < lean[own]) & (from_fold < 1.0), below, other)
         for slot, section in enumerate((own, other)):
-            normal = np.einsum("ijn,nj->in", axes, surface.normal[section])
-            offset = np.einsum("nj,jn->n", surface.normal[section], origin)
-            offset -= np.einsum("nj,nj->n", surface.normal[section], surface.origin[section])
-            planes[which, slot, :3] = normal
-            planes[which, slot, 3] = offset
+            planes[which, slot] = _plane(surface, section, axes, origin)
     return planes
+
+
+def _plane(surface: Surface, section: Ints, axes: Array, origin: Array) -> Array:
+    """Normal and offset (4, N) in base axes of the sections (N,): n.p + offset is the clearance."""
+    normal = surface.normal[section]
+    offset = np.einsum("nj,jn->n", normal, origin)
+    offset -= np.einsum("nj,nj->n", normal, surface.origin[section])
+    return np.concatenate([np.einsum("ijn,nj->in", axes, normal), offset[None]])

@@ -248,6 +248,12 @@ def turned(turn: Array, step: Array) -> Array:
     )
 
 
+def twisted(angle: float) -> Array:
+    """Trunk turned about its own length by ``angle`` [rad], right side to the wall. (3, 3)"""
+    c, s = cos(angle), sin(angle)
+    return np.array([[c, 0.0, s], [0.0, 1.0, 0.0], [-s, 0.0, c]])
+
+
 def tilted(angle: float) -> Array:
     """Trunk leaning to the right by ``angle`` [rad] in the surface's plane. Shape (3, 3)."""
     c, s = cos(angle), sin(angle)

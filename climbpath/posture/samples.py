@@ -20,7 +20,7 @@ from climbpath.contacts import Limb
 from climbpath.posture.assembly import FIRST_JOINT, assemble, rest_points
 from climbpath.posture.batch import StanceBatch
 from climbpath.posture.com import com_of, joint_weights
-from climbpath.posture.limits import slack, tilted, upright
+from climbpath.posture.limits import slack, tilted, twisted, upright
 from climbpath.posture.linkage import LIMB_SIDE, Linkage
 from climbpath.posture.solver import Postures
 
@@ -31,11 +31,17 @@ CHUNK = 4096
 LEAN = 0.45
 """Sideways lean of the trunk tried besides upright and the solver's own, rad."""
 
+TWIST = 0.7
+"""Turn of the trunk about its own length tried as well, rad: it brings one shoulder nearer."""
+
 OUT = 0.15
 """Extra distance off the wall tried where folded legs need the room, m."""
 
-TRIES = 3
-"""How many of the candidate trunks are assembled before a level is given up."""
+TRIES = 8
+"""How many of the candidate trunks are looked at before a level is given up."""
+
+ROUGH = 0.03
+"""What a roughly placed trunk may miss a limit by and still be assembled, m."""
 
 CORRECTIONS = 2
 HEIGHT_TOLERANCE = 0.004
@@ -187,20 +193,34 @@ def _chunk(
             break
         choice = np.argmin(misses[:, open_], axis=0)
         misses[choice, open_] = np.inf
-        turn = np.stack([candidates[c][0][..., open_] for c in range(len(candidates))])
-        turn = np.moveaxis(turn, 0, -1)[..., np.arange(len(open_)), choice]
-        out = np.stack([candidates[c][1][open_] for c in range(len(candidates))])
-        extra = np.array([c[2] for c in candidates])[choice]
-        out = out[choice, np.arange(len(open_))]
+        turn, out, extra = _chosen(candidates, choice, open_)
+        own = wide.take(open_)
+        part = _Guess(spread.share[open_], spread.lever[:, open_], spread.fixed[:, open_])
+        # Roughly placed, a trunk that breaks a limit by far is not worth assembling.
+        shift, _miss = _place(linkage, own, part, turn, out, extra, line_x, goal[open_], None)
+        likely = np.minimum(*slack(linkage, own, turn, shift)) > -ROUGH
+        trial = np.flatnonzero(likely)
         good, shift, com, spare = _assembled(
-            linkage, wide.take(open_), weights, spread, open_, turn, out, extra, line_x, goal[open_]
+            linkage, own.take(trial), weights, part, trial, turn[..., trial], out[trial],
+            extra[trial], line_x, goal[open_[trial]],
         )
-        kept.append((open_[good], turn[..., good], shift[:, good], com[:, good], spare[good]))
-        open_ = open_[~good]
+        done = trial[good]
+        kept.append((open_[done], turn[..., done], shift[:, good], com[:, good], spare[good]))
+        open_ = np.delete(open_, done)
     return _gather(linkage, batch, postures, weights, lattice, stance, level, kept)
 
 
 Candidate = tuple[Array, Array, float]
+
+
+def _chosen(candidates: list[Candidate], choice: Ints, rows: Ints) -> tuple[Array, Array, Array]:
+    """Turn, distance off the wall and extra distance of one candidate for each of some rows."""
+    turn, out = np.empty((3, 3, len(rows))), np.empty(len(rows))
+    for number, candidate in enumerate(candidates):
+        own = np.flatnonzero(choice == number)
+        turn[..., own] = candidate[0][..., rows[own]]
+        out[own] = candidate[1][rows[own]]
+    return turn, out, np.array([c[2] for c in candidates])[choice]
 
 
 def _candidates(linkage: Linkage, postures: Postures, stance: Ints) -> list[Candidate]:
@@ -209,6 +229,7 @@ def _candidates(linkage: Linkage, postures: Postures, stance: Ints) -> list[Cand
     count = len(stance)
     near = np.full(count, np.nan)
     leans = [np.repeat(tilted(angle)[:, :, None], count, axis=2) for angle in (LEAN, -LEAN)]
+    twists = [np.repeat(twisted(angle)[:, :, None], count, axis=2) for angle in (TWIST, -TWIST)]
     return [
         (own, postures.shift[2, stance], 0.0),
         (own, near, 0.0),
@@ -216,6 +237,7 @@ def _candidates(linkage: Linkage, postures: Postures, stance: Ints) -> list[Cand
         (upright(count), near, OUT),
         (leans[0], near, 0.0),
         (leans[1], near, 0.0),
+        *((turn, near, extra) for turn in twists for extra in (0.0, OUT)),
     ]
 
 

@@ -57,6 +57,10 @@ DROP_SHARE = 0.12
 SETTLED = 1e-4
 """A full step gains less reach than this, m, once an iteration is finished."""
 
+STILL = 0.03
+"""A full step turns the trunk by less than this, rad, once an iteration is finished: with the
+damping, the slope that is left is then under 3 mm a radian."""
+
 CONVERGED = 5e-4
 """Sum of slack times multiplier, m, under which an iteration counts as finished after a nearly full
 step: the reach is then within about that of its optimum."""
@@ -95,7 +99,7 @@ class _Round:
 ROUNDS = (
     _Round(20, -np.inf, np.inf, 0.30, False, (0.0,)),
     _Round(26, -np.inf, np.inf, 0.30, False, (0.7, -0.7)),
-    _Round(30, -0.08, 0.02, 0.05, True, (0.7, -0.7)),
+    _Round(30, -0.08, np.inf, 0.05, True, (0.7, -0.7)),
 )
 """The optimum often lies at the turn limit, and a valley leads there from either side only."""
 
@@ -313,7 +317,7 @@ def _step(run: _Run, state: _State) -> None:
     centring = np.where(np.minimum(length, dual) > 0.7, 0.12, 0.4)
     run.target = np.maximum(centring * total / run.active.sum(axis=0), 1e-9)
     run.settled = (total < CONVERGED) & (np.minimum(length, dual) > 0.9)
-    run.settled &= np.abs(step[6]) < SETTLED
+    run.settled &= (np.abs(step[6]) < SETTLED) & (_norm(step[:3]) < STILL)
     run.turn = turned(run.turn, step[:3] * length)
     turn, move = run.turn, step[3:6] * length
     run.shift = run.shift + np.stack(

@@ -65,18 +65,15 @@ def check_agreement(cases: list[Case]) -> None:
           f"other answer; solver minus careful from {min(gap):.1f} to {max(gap):.1f} mm")
     print(*short, *turned, sep="\n")
     assert not turned
-    # A prototype of the same method had 399 of 400 within 5 mm of the best of six starts, on
-    # stances that were not picked; half of these lie near zero margin, where optima are many.
-    assert len(short) <= max(1, len(cases) // 50)
+    assert not short
 
 
-@pytest.mark.xfail(strict=True, reason="no start is twisted, where the optimum often is")
 def test_agrees_with_a_careful_solver() -> None:
     check_agreement(compared(60, 2))
 
 
 @pytest.mark.slow
-@pytest.mark.xfail(strict=True, reason="no start is twisted, where the optimum often is")
+
 def test_agrees_with_a_careful_solver_on_many() -> None:
     check_agreement(compared(200, 4))
 
@@ -119,7 +116,8 @@ def test_trunk_and_lengths_hold_at_folds(lower: float, upper: float) -> None:
 
 
 @FOLDS
-@pytest.mark.xfail(strict=True, reason="knees and ankles mind the plane of the pelvis alone")
+
+@pytest.mark.xfail(strict=True, reason="each joint minds one plane: a few in a thousand enter")
 def test_knees_and_ankles_stay_outside_at_folds(lower: float, upper: float) -> None:
     assert at_fold(lower, upper) == []
 

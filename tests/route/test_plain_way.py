@@ -64,7 +64,7 @@ def test_same_best_time_on_a_small_wall(flights: bool) -> None:
 
 
 @pytest.mark.slow
-@pytest.mark.parametrize("wall", [five_holds(), five_holds(0.2), small_wall(0, 5, 3.5)],
+@pytest.mark.parametrize("wall", [five_holds(), five_holds(0.2), small_wall(0, 4, 3.2)],
                          ids=["five holds", "moved", "random"])
 def test_same_best_time_with_smears(wall: Wall) -> None:
     program, plain, _ = both_ways(wall, Conditions())

@@ -103,9 +103,6 @@ def test_margins_do_not_depend_on_what_is_solved_together() -> None:
     assert max(np.abs([*gaps.values()])) < 1e-9, {k: g for k, g in gaps.items() if abs(g) > EDGE}
 
 
-@pytest.mark.xfail(
-    strict=True, reason="a smaller stance is held in a local optimum, or feet match 50 mm away"
-)
 def test_nothing_is_missed_that_trying_everything_finds() -> None:
     missed: dict[tuple[object, ...], float] = {}
     number = 0
