@@ -11,7 +11,7 @@ corrections bring its centre of mass onto the level.
 
 from __future__ import annotations
 
-from dataclasses import dataclass
+from dataclasses import dataclass, fields
 
 import numpy as np
 from numpy.typing import NDArray
@@ -22,7 +22,7 @@ from climbpath.posture.batch import StanceBatch
 from climbpath.posture.com import com_of, joint_weights
 from climbpath.posture.limits import slack, tilted, twisted, upright
 from climbpath.posture.linkage import LIMB_SIDE, Linkage
-from climbpath.posture.solver import Postures
+from climbpath.posture.solver import Aim, Postures, nearer_line
 
 Array = NDArray[np.float64]
 Ints = NDArray[np.int64]
@@ -37,8 +37,13 @@ TWIST = 0.7
 OUT = 0.15
 """Extra distance off the wall tried where folded legs need the room, m."""
 
-TRIES = 8
+TRIES = 4
 """How many of the candidate trunks are looked at before a level is given up."""
+
+NEAR_ENOUGH = 0.01
+NEARER_STEPS = (12, 8)
+"""Samples farther than this (m) from the line are brought nearer, in so many Newton steps between
+corrections of the centre of mass."""
 
 ROUGH = 0.03
 """What a roughly placed trunk may miss a limit by and still be assembled, m."""
@@ -119,6 +124,25 @@ class _Guess:
     fixed: Array
 
 
+@dataclass(frozen=True)
+class _Found:
+    """Samples found so far: which stance and level (index into both), trunk, CoM, spare reach."""
+
+    index: Ints
+    turn: Array
+    shift: Array
+    com: Array
+    spare: Array
+
+    @classmethod
+    def join(cls, parts: list[_Found]) -> _Found:
+        """All samples of several rounds."""
+        none = cls(np.zeros(0, np.int64), np.zeros((3, 3, 0)), np.zeros((3, 0)), np.zeros((3, 0)),
+                   np.zeros(0))
+        return cls(*(np.concatenate([getattr(part, f.name) for part in (none, *parts)], axis=-1)
+                     for f in fields(cls)))
+
+
 def _guess(linkage: Linkage, batch: StanceBatch, weights: Array) -> _Guess:
     count = batch.size
     share = np.ones(count)
@@ -185,7 +209,7 @@ def _chunk(
     ])
     # Earlier candidates win ties, and small gains are not worth an odd posture.
     misses += 0.002 * np.arange(len(candidates))[:, None]
-    kept: list[tuple[Ints, Array, Array, Array, Array]] = []
+    kept: list[_Found] = []
     open_ = np.arange(len(stance))
     for _ in range(TRIES):
         open_ = open_[np.isfinite(misses[:, open_]).any(axis=0)]
@@ -205,9 +229,13 @@ def _chunk(
             extra[trial], line_x, goal[open_[trial]],
         )
         done = trial[good]
-        kept.append((open_[done], turn[..., done], shift[:, good], com[:, good], spare[good]))
+        kept.append(
+            _Found(open_[done], turn[..., done], shift[:, good], com[:, good], spare[good])
+        )
         open_ = np.delete(open_, done)
-    return _gather(linkage, batch, postures, weights, lattice, stance, level, kept)
+    found = _Found.join(kept)
+    _bring_nearer(linkage, wide, weights, spread, found, line_x, goal)
+    return _gather(linkage, batch, postures, weights, lattice, stance, level, found)
 
 
 Candidate = tuple[Array, Array, float]
@@ -239,6 +267,34 @@ def _candidates(linkage: Linkage, postures: Postures, stance: Ints) -> list[Cand
         (leans[1], near, 0.0),
         *((turn, near, extra) for turn in twists for extra in (0.0, OUT)),
     ]
+
+
+def _bring_nearer(
+    linkage: Linkage, wide: StanceBatch, weights: Array, guess: _Guess, found: _Found,
+    line_x: float, goal: Array,
+) -> None:
+    """Bring the samples that stand off the line as near to it as the whole trunk allows."""
+    off = np.flatnonzero(np.abs(found.com[0] - line_x) > NEAR_ENOUGH)
+    if not len(off):
+        return
+    index = found.index[off]
+    batch = wide.take(index)
+    share, lever = guess.share[index], guess.lever[:, index]
+    turn, shift, com = found.turn[..., off], found.shift[:, off], found.com[:, off]
+    for steps in NEARER_STEPS:
+        # The guess of the centre of mass is made exact where the posture now stands.
+        fixed = com - share * shift - np.einsum("ijn,jn->in", turn, lever)
+        aim = Aim(share, lever, fixed, line_x, goal[index])
+        turn, shift = nearer_line(linkage, batch, turn, shift, aim, steps)
+        com = com_of(weights, assemble(linkage, batch, turn, shift))
+    spare, hard = slack(linkage, batch, turn, shift)
+    height = (batch.vertical * com).sum(axis=0)
+    good = (spare >= -REACH_TOLERANCE) & (hard >= -REACH_TOLERANCE)
+    good &= np.abs(height - goal[index]) <= HEIGHT_TOLERANCE
+    good &= np.abs(com[0] - line_x) < np.abs(found.com[0, off] - line_x)
+    better = off[good]
+    found.turn[..., better], found.shift[:, better] = turn[..., good], shift[:, good]
+    found.com[:, better], found.spare[better] = com[:, good], np.maximum(spare[good], 0.0)
 
 
 def _place(
@@ -356,24 +412,23 @@ def _assembled(
 
 def _gather(
     linkage: Linkage, batch: StanceBatch, postures: Postures, weights: Array, lattice: Lattice,
-    stance: Ints, level: Ints, kept: list[tuple[Ints, Array, Array, Array, Array]],
+    stance: Ints, level: Ints, found: _Found,
 ) -> Samples:
-    """Join the rounds, add the solver's own posture where a stance has nothing, and sort."""
+    """Add the solver's own posture where a stance has nothing, and sort."""
     has = np.zeros(batch.size, dtype=bool)
-    for index, *_ in kept:
-        has[stance[index]] = True
+    has[stance[found.index]] = True
     bare = np.flatnonzero(~has)
     tight = batch.take(bare)
     turn, shift = postures.turn[..., bare], postures.shift[:, bare]
     com = com_of(weights, assemble(linkage, tight, turn, shift))
     height = (tight.vertical * com).sum(axis=0) + tight.origin[1]
     nearest = np.rint((height - lattice.anchor) / lattice.step).astype(np.int64)
-    stances = np.concatenate([*(stance[k[0]] for k in kept), bare])
-    levels = np.concatenate([*(level[k[0]] for k in kept), nearest])
+    stances = np.concatenate([stance[found.index], bare])
+    levels = np.concatenate([level[found.index], nearest])
     order = np.lexsort((levels, stances))
-    turns = np.concatenate([*(k[1] for k in kept), turn], axis=-1)
-    shifts = np.concatenate([*(k[2] for k in kept), shift], axis=-1)
-    coms = np.concatenate([*(k[3] for k in kept), com], axis=-1)
-    spares = np.concatenate([*(k[4] for k in kept), np.maximum(postures.margin[bare], 0.0)])
+    turns = np.concatenate([found.turn, turn], axis=-1)
+    shifts = np.concatenate([found.shift, shift], axis=-1)
+    coms = np.concatenate([found.com, com], axis=-1)
+    spares = np.concatenate([found.spare, np.maximum(postures.margin[bare], 0.0)])
     return Samples(stances[order], levels[order], turns[..., order], shifts[:, order],
                    coms[:, order], spares[order])

@@ -9,7 +9,7 @@ References: S. Wright, Primal-Dual Interior-Point Methods, SIAM 1997, chapter 1 
 
 from __future__ import annotations
 
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 
 import numpy as np
 from numpy.typing import NDArray
@@ -60,6 +60,9 @@ SETTLED = 1e-4
 STILL = 0.03
 """A full step turns the trunk by less than this, rad, once an iteration is finished: with the
 damping, the slope that is left is then under 3 mm a radian."""
+
+HEIGHT_ROOM = 0.001
+"""How far an aimed centre of mass may stand off its height, m."""
 
 CONVERGED = 5e-4
 """Sum of slack times multiplier, m, under which an iteration counts as finished after a nearly full
@@ -202,6 +205,44 @@ class _State:
     value: Array
 
 
+@dataclass(frozen=True)
+class Aim:
+    """Bring the centre of mass near a line at a given height instead of gaining reach.
+
+    The centre of mass is taken as ``share`` * trunk + R ``lever`` + ``fixed``: (N,), (3, N),
+    (3, N) [m]. ``line`` [m] is the line's x, ``goal`` (N,) [m] the height along ``vertical``.
+    """
+
+    share: Array
+    lever: Array
+    fixed: Array
+    line: float
+    goal: Array
+
+    def take(self, index: Ints) -> Aim:
+        """The chosen stances."""
+        return Aim(self.share[index], self.lever[:, index], self.fixed[:, index], self.line,
+                   self.goal[index])
+
+    def limits(self, batch: StanceBatch, turn: Array, shift: Array, spare: Array
+               ) -> list[PointLimit]:
+        """-spare bounds the distance from the line on both sides; the height is held narrowly."""
+        limits = []
+        centre = self.lever / self.share
+        across = np.zeros_like(batch.vertical)
+        across[0] = 1.0
+        off = self.fixed[0] - self.line
+        above = (batch.vertical * self.fixed).sum(axis=0) - self.goal
+        for axis, rest, room, spares in ((across, off, -spare, True),
+                                         (batch.vertical, above, HEIGHT_ROOM, False)):
+            normal = np.stack([self.share * (turn[0, j] * axis[0] + turn[1, j] * axis[1]
+                                             + turn[2, j] * axis[2]) for j in range(3)])
+            place = self.share * (axis * shift).sum(axis=0) + (normal * centre).sum(axis=0) + rest
+            for sign in (1.0, -1.0):
+                limits.append(PointLimit(room + sign * place, sign * normal, centre, True, spares))
+        return limits
+
+
 @dataclass
 class _Run:
     """The iterates of the stances of a chunk that are still being worked on.
@@ -220,6 +261,7 @@ class _Run:
     active: NDArray[np.bool_]
     slacks: Array
     multipliers: Array
+    aim: Aim | None = None
 
     def keep(self, alive: Ints) -> None:
         """Drop the stances that are done."""
@@ -227,14 +269,21 @@ class _Run:
         for name in ("index", "turn", "shift", "spare", "target", "settled", "active", "slacks",
                      "multipliers"):
             setattr(self, name, np.ascontiguousarray(getattr(self, name)[..., alive]))
+        if self.aim is not None:
+            self.aim = self.aim.take(alive)
 
 
 def _evaluate(linkage: Linkage, run: _Run, layout: PointLayout) -> _State:
     geometry = limb_geometry(linkage, run.batch, run.turn, run.shift)
     joints = joint_limits(linkage, geometry)
-    points = point_limits(linkage, run.batch, run.turn, run.shift, run.spare, layout)
+    zero = np.zeros_like(run.spare)
+    spare = run.spare if run.aim is None else zero
+    points = point_limits(linkage, run.batch, run.turn, run.shift, spare, layout)
+    if run.aim is not None:
+        points = [replace(limit, spare=False) for limit in points]
+        points += run.aim.limits(run.batch, run.turn, run.shift, run.spare)
     value = np.empty((POINTS + len(points), run.batch.size))
-    np.subtract(run.batch.reach - run.spare, geometry.distance, out=value[REACH])
+    np.subtract(run.batch.reach - spare, geometry.distance, out=value[REACH])
     np.subtract(geometry.distance, run.batch.fold, out=value[FOLD])
     value[HEIGHT], value[ACROSS] = joints.height, joints.across
     value[LIFT], value[OUT] = joints.lift, joints.out
@@ -254,8 +303,21 @@ def _active(batch: StanceBatch, layout: PointLayout, points: list[PointLimit]
     return np.concatenate(rows)
 
 
+def nearer_line(
+    linkage: Linkage, batch: StanceBatch, turn: Array, shift: Array, aim: Aim, steps: int
+) -> tuple[Array, Array]:
+    """Move N possible postures so that their centre of mass comes as near the line as it can.
+
+    From ``turn`` (3, 3, N) and ``shift`` (3, N) [m]; returns both anew. Reach and hard limits
+    are kept to within what the iteration leaves, so check them before use.
+    """
+    found, _ = _descend(linkage, batch, turn, shift, steps, aim)
+    return found.turn, found.shift
+
+
 def _descend(
-    linkage: Linkage, batch: StanceBatch, turn: Array, shift: Array, steps: int
+    linkage: Linkage, batch: StanceBatch, turn: Array, shift: Array, steps: int,
+    aim: Aim | None = None,
 ) -> tuple[Postures, NDArray[np.bool_]]:
     """Interior-point steps from one start for all stances of a chunk.
 
@@ -264,11 +326,14 @@ def _descend(
     """
     layout = point_layout(batch)
     spare = slack(linkage, batch, turn, shift)[0] - 0.05
+    if aim is not None:
+        centre = aim.share * shift + np.einsum("ijn,jn->in", turn, aim.lever) + aim.fixed
+        spare = -np.abs(centre[0] - aim.line) - 0.05
     end = Postures(np.zeros(batch.size), turn.copy(), shift.copy())
     certain = np.zeros(batch.size, dtype=bool)
     none = np.zeros((0, batch.size))
     run = _Run(batch, np.arange(batch.size), turn, shift, spare, np.full(batch.size, 0.02),
-               np.zeros(batch.size, dtype=bool), none.astype(bool), none, none)
+               np.zeros(batch.size, dtype=bool), none.astype(bool), none, none, aim)
     state = _evaluate(linkage, run, layout)
     run.active = _active(batch, layout, state.points)
     run.slacks = np.where(run.active, np.maximum(state.value, 0.03), 1.0)
@@ -305,7 +370,7 @@ def _step(run: _Run, state: _State) -> None:
     """One Newton step of all iterates, as long as slacks and multipliers stay positive."""
     step = _newton(run, state)
     slacks, multipliers = run.slacks, run.multipliers
-    slack_step = np.where(run.active, _linear_change(state, step) + state.value - slacks, 0.0)
+    slack_step = np.where(run.active, _linear_change(run, state, step) + state.value - slacks, 0.0)
     dual_step = np.where(run.active, (run.target - multipliers * slack_step) / slacks, 0.0)
     dual_step -= multipliers
     length = np.minimum(_to_boundary(slacks, slack_step), 0.4 / np.maximum(_norm(step[:3]), 0.4))
@@ -370,16 +435,20 @@ def _newton(run: _Run, state: _State) -> Array:
     pull[0, 2:] -= side[2:] * right[OUT]
     curve[0, 2:] -= side[2:] * m[OUT]
     inner[0][2:] += weight[OUT]
-    system.add_limbs(state.geometry.point, inner, pull, curve, -weight[REACH] * u)
-    system.matrix[6][6] += weight[REACH].sum(axis=0) + 1e-9
-    system.right[6] += 1.0 - right[REACH].sum(axis=0)
+    system.right[6] += 1.0
+    if run.aim is None:
+        system.add_limbs(state.geometry.point, inner, pull, curve, -weight[REACH] * u)
+        system.matrix[6][6] += weight[REACH].sum(axis=0) + 1e-9
+        system.right[6] -= right[REACH].sum(axis=0)
+    else:
+        system.add_limbs(state.geometry.point, inner, pull, curve, np.zeros_like(u))
     for row, limit in enumerate(state.points, start=POINTS):
         system.add_plane(limit.normal, limit.offset, weight[row], right[row], m[row],
                          limit.shifts, limit.spare)
     return np.stack(system.solve())
 
 
-def _linear_change(state: _State, step: Array) -> Array:
+def _linear_change(run: _Run, state: _State, step: Array) -> Array:
     """How every limit changes along ``step`` to first order, (M, N)."""
     w, u, t = step[:3], step[3:6], step[6]
     v = state.geometry.point
@@ -387,7 +456,7 @@ def _linear_change(state: _State, step: Array) -> Array:
                       for i in range(3)])
     change = np.empty_like(state.value)
     change[FOLD] = (state.geometry.along * moved).sum(axis=0)
-    change[REACH] = -change[FOLD] - t
+    change[REACH] = -change[FOLD] - (t if run.aim is None else 0.0)
     change[HEIGHT] = HEIGHT_SIDE[:, None] * moved[1]
     change[ACROSS] = LIMB_SIDE[:, None] * moved[0]
     change[LIFT] = (state.joints.lift_slope * moved[:, 2:]).sum(axis=0)
