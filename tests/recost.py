@@ -32,8 +32,8 @@ from climbpath.contacts import CONTACT_CODES, FLOOR, FREE, LIMB_NAMES, SMEAR
 from climbpath.motion.model import GRAVITY, PacedMotion
 from climbpath.posture.assembly import REST_FOOT, REST_HAND
 from climbpath.posture.linkage import linkage_of
+from climbpath.posture.newton import Postures
 from climbpath.posture.samples import Lattice, com_samples
-from climbpath.posture.solver import Postures
 from climbpath.route.build import FLIGHT_BIN, FLIGHT_SIDE, MAX_DROP, MAX_RISE
 from climbpath.stance.enumerate import batch_of, solve
 from climbpath.stance.options import contact_options, contact_points

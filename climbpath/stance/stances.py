@@ -9,8 +9,8 @@ from numpy.typing import NDArray
 
 from climbpath.contacts import FREE, SMEAR, Limb
 from climbpath.posture.linkage import Linkage
+from climbpath.posture.newton import Postures
 from climbpath.posture.samples import Lattice, com_samples
-from climbpath.posture.solver import Postures
 from climbpath.stance.enumerate import Allowed, Found, all_stances, batch_of
 from climbpath.stance.options import ContactOptions, contact_points
 

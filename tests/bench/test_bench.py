@@ -19,8 +19,9 @@ from numpy.typing import NDArray
 
 from climbpath.motion.model import PacedMotion
 from climbpath.posture.linkage import linkage_of
+from climbpath.posture.newton import Postures
 from climbpath.posture.samples import Lattice, com_samples
-from climbpath.posture.solver import Postures, solve_postures
+from climbpath.posture.solver import solve_postures
 from climbpath.route.build import build_graph
 from climbpath.stance.enumerate import Allowed, all_stances, batch_of
 from climbpath.stance.options import contact_options

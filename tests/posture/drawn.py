@@ -12,7 +12,8 @@ from climbpath.contacts import FLOOR, FREE
 from climbpath.posture.assembly import assemble
 from climbpath.posture.batch import StanceBatch, stance_batch
 from climbpath.posture.linkage import Linkage, linkage_of
-from climbpath.posture.solver import Postures, solve_postures
+from climbpath.posture.newton import Postures
+from climbpath.posture.solver import solve_postures
 from climbpath.wall import Section, Surface, Wall, surface_of
 
 Array = NDArray[np.float64]

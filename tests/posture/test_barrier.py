@@ -9,7 +9,7 @@ import pytest
 from numpy.typing import NDArray
 
 from climbpath.posture import limits as lim
-from climbpath.posture import solver
+from climbpath.posture import newton
 from climbpath.posture.barrier import SIZE, System
 from climbpath.posture.batch import StanceBatch
 from climbpath.posture.linkage import Linkage
@@ -95,16 +95,17 @@ def place(request: pytest.FixtureRequest) -> Place:
     return Place(stances.linkage, batch.take(kept), turn[..., kept], shift[:, kept], spare)
 
 
-def run_of(place: Place, **more: Array | NDArray[np.bool_]) -> solver._Run:
+def run_of(place: Place, **more: Array | NDArray[np.bool_]) -> newton._Run:
     """The solver's iterates at a place; what a test does not give is not looked at."""
-    fields: dict[str, Any] = dict.fromkeys(solver._Run.__dataclass_fields__, np.zeros(0))
+    fields: dict[str, Any] = dict.fromkeys(newton._Run.__dataclass_fields__, np.zeros(0))
+    fields["aim"] = None
     fields |= {"batch": place.batch, "turn": place.turn, "shift": place.shift,
                "spare": place.spare, **more}
-    return solver._Run(**fields)
+    return newton._Run(**fields)
 
 
-def state_of(place: Place) -> solver._State:
-    return solver._evaluate(place.linkage, run_of(place), lim.point_layout(place.batch))
+def state_of(place: Place) -> newton._State:
+    return newton._evaluate(place.linkage, run_of(place), lim.point_layout(place.batch))
 
 
 def test_limits_have_one_definition(place: Place) -> None:
@@ -118,7 +119,7 @@ def test_linear_change_is_the_slope(place: Place) -> None:
         step[k] = SMALL
         slope = (place.values(step) - place.values(-step)) / (2.0 * SMALL)
         unit = np.repeat(np.eye(SIZE)[:, k, None], place.batch.size, axis=1)
-        assert solver._linear_change(state, unit) == pytest.approx(slope, abs=1e-5)
+        assert newton._linear_change(run_of(place), state, unit) == pytest.approx(slope, abs=1e-5)
 
 
 def second(place: Place) -> Array:
@@ -145,7 +146,7 @@ def test_newton_system_is_slopes_and_curvatures(
     """The matrix is sum of m/s g' g'^T - m g'', the right-hand side sum of r g' plus that of t."""
     state = state_of(place)
     values = place.values(np.zeros(SIZE))
-    active = solver._active(place.batch, lim.point_layout(place.batch), state.points)
+    active = newton._active(place.batch, lim.point_layout(place.batch), state.points)
     rng = np.random.default_rng(4)
     slacks = np.where(active, rng.uniform(0.02, 0.5, values.shape), 1.0)
     multipliers = np.where(active, rng.uniform(0.0, 0.5, values.shape), 0.0)
@@ -161,17 +162,16 @@ def test_newton_system_is_slopes_and_curvatures(
 
     monkeypatch.setattr(System, "solve", solve)
     run = run_of(place, target=target, active=active, slacks=slacks, multipliers=multipliers)
-    solver._newton(run, state)
+    newton._newton(run, state)
     system = seen[0]
-    slope = np.stack([solver._linear_change(state, np.repeat(np.eye(SIZE)[:, k, None],
-                                                             place.batch.size, axis=1))
-                      for k in range(SIZE)])
+    units = [np.repeat(np.eye(SIZE)[:, k, None], place.batch.size, axis=1) for k in range(SIZE)]
+    slope = np.stack([newton._linear_change(run_of(place), state, unit) for unit in units])
     curve = second(place)
     weight = multipliers / slacks
     right = np.where(active, multipliers + target / slacks - weight * values, 0.0)
     matrix = np.einsum("mn,imn,jmn->ijn", weight, slope, slope)
     matrix -= np.einsum("mn,ijmn->ijn", multipliers, curve)
-    damping = [solver.DAMPING[k] + solver.DAMPING_PER_TARGET[k] * target for k in (0, 1)]
+    damping = [newton.DAMPING[k] + newton.DAMPING_PER_TARGET[k] * target for k in (0, 1)]
     for k in range(3):
         matrix[k, k] += damping[0]
         matrix[3 + k, 3 + k] += damping[1]

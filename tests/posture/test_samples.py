@@ -13,6 +13,7 @@ from scipy.optimize import minimize
 from climbpath.body import SEGMENT_ENDS, segment_table
 from climbpath.posture.assembly import JOINT, assemble
 from climbpath.posture.com import com_of, joint_weights
+from climbpath.posture.newton import Postures
 from climbpath.posture.samples import (
     HEIGHT_TOLERANCE,
     REACH_TOLERANCE,
@@ -20,7 +21,6 @@ from climbpath.posture.samples import (
     Samples,
     com_samples,
 )
-from climbpath.posture.solver import Postures
 from tests.posture.drawn import Drawn, drawn, flat, sections_of
 from tests.posture.oracle import Body, Stance, rotation
 from tests.posture.skeleton import broken
@@ -278,13 +278,11 @@ def check_near_the_line(number: int, random: int) -> None:
     assert high <= 20.0
 
 
-@pytest.mark.xfail(strict=True, reason="no twisted trunk is among the candidates")
 def test_samples_are_nearly_as_near_the_line_as_can_be() -> None:
     check_near_the_line(24, 0)
 
 
 @pytest.mark.slow
-@pytest.mark.xfail(strict=True, reason="no twisted trunk is among the candidates")
 def test_many_samples_are_nearly_as_near_the_line_as_can_be() -> None:
     check_near_the_line(150, 2)
 
