@@ -124,10 +124,11 @@ class Recoster:
         return level
 
     def travel(self, first: Point, second: Point, support: Contacts, level: bool = False) -> float:
-        """Paced travel, each axis at its own speed; ``level`` leaves the height out."""
+        """Paced travel, each axis at its own speed; ``level`` leaves up to 10 mm of height out."""
         motion = self.motion
         speed = motion.up_speed[any(c != FREE for c in support[:2]), _feet_on(support)]
-        up = 0.0 if level else (second[1] - first[1]) / speed
+        rise = second[1] - first[1]
+        up = 0.0 if level and abs(rise) <= 0.01 else rise / speed
         across = (second[0] - first[0]) / motion.side_speed
         out = (second[2] - first[2]) / motion.side_speed
         return sqrt(up**2 + across**2 + out**2)

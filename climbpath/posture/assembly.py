@@ -164,12 +164,13 @@ def lower_leg(linkage: Linkage, distance: Array) -> Array:
 
 def _leg(linkage: Linkage, batch: StanceBatch, joints: Array, limb: Limb, hip: Array, end: Array,
          floor: NDArray[np.bool_]) -> None:
-    """Hip to toe, or, on the floor, hip to an ankle standing over the ground point."""
+    """Hip to toe; on the floor, on the whole foot while the leg is long enough for that."""
     first = FIRST_JOINT[limb]
     stand = end + batch.vertical * linkage.ankle_height
-    goal = np.where(floor, stand, end)
+    flat = floor & ((batch.vertical * (hip - end)).sum(axis=0) <= linkage.floor_reach)
+    goal = np.where(flat, stand, end)
     distance = np.sqrt(((goal - hip) ** 2).sum(axis=0))
-    lower = np.where(floor, linkage.shank, lower_leg(linkage, distance))
+    lower = np.where(flat, linkage.shank, lower_leg(linkage, distance))
     way = (KNEE_WAY * [LIMB_SIDE[limb], 1.0, 1.0])[:, None] + np.zeros_like(hip)
     centre, radius, axis = _middle(hip, goal, linkage.thigh, lower)
     way = _clear(batch, limb, centre, radius, axis, _across(way, axis), KNEE_SPACE)
@@ -185,9 +186,9 @@ def _leg(linkage: Linkage, batch: StanceBatch, joints: Array, limb: Limb, hip: A
     off = _across(_across(hip - knee, reach) * radius + 1e-4 * batch.plane[0, 0, :3], reach)
     foot = knee + reach * along
     off = _clear(batch, limb, foot, height, reach, off, ANKLE_SPACE)
-    ankle = np.where(floor, knee + reach * linkage.shank, foot + off * height)
+    ankle = np.where(flat, knee + reach * linkage.shank, foot + off * height)
     joints[first + 2] = ankle
-    joints[first + 3] = np.where(floor, end, toe)
+    joints[first + 3] = np.where(flat, end, toe)
 
 
 def _clear(

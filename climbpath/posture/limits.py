@@ -162,7 +162,11 @@ def point_limits(
         plane, offset = batch.plane[which, slot], offsets[which]
         normal = _into_trunk(turn, plane[:3])
         value = _dot(plane[:3], shift) + plane[3] + _dot(offset, normal) - spaces[which]
-        limits.append(PointLimit(value, normal, offset, True, False))
+        active = None
+        if slot:
+            # Only where the second plane is another than the first does it count at all.
+            active = np.asarray((plane != batch.plane[which, 0]).any(axis=0))
+        limits.append(PointLimit(value, normal, offset, True, False, active))
     up, out = np.array([0.0, 1.0, 0.0]), np.array([0.0, 0.0, 1.0])
     limits.append(PointLimit(turn[1, 1] - TILT_LIMIT, turn[1], up, False, False))
     limits.append(PointLimit(turn[2, 2] - TURN_LIMIT, turn[2], out, False, False))
@@ -172,7 +176,7 @@ def point_limits(
         root = linkage.roots[foot]
         height = _dot(batch.vertical, shift) + _dot(root, normal) - batch.floor_level
         limits.append(
-            PointLimit(linkage.floor_reach - spare - height, -normal, root, True, True, active)
+            PointLimit(linkage.tiptoe_reach - spare - height, -normal, root, True, True, active)
         )
         limits.append(PointLimit(height - linkage.fold[foot], normal, root, True, False, active))
         # The ground point below the hip lies before the surface, also of a slab.

@@ -108,6 +108,11 @@ class Linkage:
         """Hip height of a straight leg on the whole foot, m."""
         return self.thigh + self.shank + self.ankle_height
 
+    @property
+    def tiptoe_reach(self) -> float:
+        """Hip height of a straight leg risen on the toes, m."""
+        return float(self.reach[2])
+
 
 def _side(first: float, second: float, angle: float) -> float:
     """Third side of a triangle from two sides and the angle between them."""

@@ -57,6 +57,9 @@ STILL = 0.03
 """A full step turns the trunk by less than this, rad, once an iteration is finished: with the
 damping, the slope that is left is then under 3 mm a radian."""
 
+ON_LINE = 0.002
+"""A centre of mass nearer to the line than this, m, is on it."""
+
 HEIGHT_ROOM = 0.001
 """How far an aimed centre of mass may stand off its height, m."""
 
@@ -120,6 +123,11 @@ class Aim:
         """The chosen stances."""
         return Aim(self.share[index], self.lever[:, index], self.fixed[:, index], self.line,
                    self.goal[index])
+
+    def miss(self, turn: Array, shift: Array) -> Array:
+        """Distance of the centre of mass from the line, (N,) [m]."""
+        centre = self.share * shift[0] + self.fixed[0] - self.line
+        return np.asarray(np.abs(centre + np.einsum("jn,jn->n", turn[0], self.lever)))
 
     def limits(self, batch: StanceBatch, turn: Array, shift: Array, spare: Array
                ) -> list[PointLimit]:
@@ -224,8 +232,7 @@ def descend(
     layout = point_layout(batch)
     spare = slack(linkage, batch, turn, shift)[0] - 0.05
     if aim is not None:
-        centre = aim.share * shift + np.einsum("ijn,jn->in", turn, aim.lever) + aim.fixed
-        spare = -np.abs(centre[0] - aim.line) - 0.05
+        spare = -aim.miss(turn, shift) - 0.05
     end = Postures(np.zeros(batch.size), turn.copy(), shift.copy())
     certain = np.zeros(batch.size, dtype=bool)
     none = np.zeros((0, batch.size))
@@ -241,6 +248,9 @@ def descend(
         state = _evaluate(linkage, run, layout)
         least = np.where(run.active, state.value, np.inf).min(axis=0)
         done = run.settled & (least > -HARD_TOLERANCE)
+        if run.aim is not None:
+            # On the line many postures are equally good: stop at the first, before rounding picks.
+            done |= (run.aim.miss(run.turn, run.shift) < ON_LINE) & (least > -HARD_TOLERANCE)
         # What is done is taken down at once, so that no result depends on the others in the arrays.
         fresh = open_[run.index] & (done if iteration < steps else True)
         where = run.index[fresh]

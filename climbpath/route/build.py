@@ -35,6 +35,10 @@ MAX_RISE = 0.80
 MAX_DROP = 0.25
 """How far the centre of mass may rise or sink in one move, m."""
 
+SAME_HEIGHT = 0.01
+"""Samples of one level whose heights differ by no more than this, m, count as equally high: twice
+what a sample may stand off its level, and a little."""
+
 FLIGHT_BIN = 0.10
 FLIGHT_SIDE = 0.35
 """Flights are sorted by take-off x in bins of this width, and drift sideways by at most that, m."""
@@ -185,9 +189,9 @@ class _Builder:
         return np.repeat(first, LASTS), np.repeat(second, LASTS), last
 
     def _shift(self, first: Ints, second: Ints, drive: Ints) -> Array:
-        """Time to shift sideways between two samples of one level."""
+        """Time to shift between two samples of one level; heights differ only off the lattice."""
         change = self.stances.com[second] - self.stances.com[first]
-        change[:, 1] = 0.0
+        change[:, 1] = np.where(np.abs(change[:, 1]) <= SAME_HEIGHT, 0.0, change[:, 1])
         return self.motion.travel(change, Drive(self.hands[drive], self.feet[drive]))
 
     def releases(self, limb: int) -> _Arcs:

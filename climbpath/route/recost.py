@@ -14,7 +14,7 @@ from numpy.typing import NDArray
 from climbpath.contacts import FREE, Limb
 from climbpath.errors import ClimbpathError
 from climbpath.motion.model import Drive, Motion
-from climbpath.route.build import FLIGHT_BIN, SearchGraph
+from climbpath.route.build import FLIGHT_BIN, SAME_HEIGHT, SearchGraph
 from climbpath.route.nodes import LANDED, PHASES
 from climbpath.route.shortest import Route
 from climbpath.stance.options import ContactOptions
@@ -70,7 +70,7 @@ class Recoster:
     def _travel(self, tail: int, head: int, support: Ints, level: bool) -> float:
         com = self.search.stances.com
         change = com[self._sample(head)] - com[self._sample(tail)]
-        if level:
+        if level and abs(change[1]) <= SAME_HEIGHT:
             change[1] = 0.0
         engaged = support != FREE
         drive = Drive(np.array([engaged[:2].sum()]), np.array([engaged[2:].sum()]))

@@ -190,7 +190,7 @@ class _Search:
             rows.append(np.stack([first[near["i"]], second[near["j"]]], axis=1))
         floor = options.holds
         upper = linkage.trunk + arm if both[0] <= Limb.RH else float(linkage.reach[2])
-        tall = linkage.floor_reach + upper
+        tall = linkage.tiptoe_reach + upper
         height = options.point[:, 1] - options.floor_level
         for place in (0, 1):
             if floor not in choices[both[place]]:

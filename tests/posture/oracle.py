@@ -64,7 +64,7 @@ class Body:
             trunk=float(linkage.roots[0, 1]),
             reach=linkage.reach,
             fold=linkage.fold,
-            stand=linkage.thigh + linkage.shank + linkage.ankle_height,
+            stand=float(linkage.reach[2]),
             knee=linkage.knee_limit,
             lower=linkage.lower_leg[1],
             sideways=linkage.out_limit,

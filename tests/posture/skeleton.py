@@ -168,9 +168,11 @@ def _leg(
     stands = contact == FLOOR
     ground = np.array([0.0, surface.floor_height, 0.0])
     below = ankle - np.array([0.0, length("ankle_height"), 0.0])
-    foot_on_floor = np.maximum(_norm(below - end), np.abs((end - ground)[:, 1]))
-    foot_on_floor = np.maximum(foot_on_floor, _norm((end - hip)[:, [0, 2]])) - LENGTH_TOLERANCE
     toe = length("ankle_to_toe")
+    # On the floor the whole foot stands, or the foot has risen on the toe.
+    whole, risen = _norm(below - end), np.abs(_norm(end - ankle) - toe)
+    foot_on_floor = np.maximum(np.minimum(whole, risen), np.abs((end - ground)[:, 1]))
+    foot_on_floor = np.maximum(foot_on_floor, _norm((end - hip)[:, [0, 2]])) - LENGTH_TOLERANCE
     rest = np.pi / 2 + np.arcsin(min(length("ankle_height") / toe, 1.0))
     angle = _angle(knee - ankle, end - ankle)
     hinge = np.maximum(rest - limit["ankle_dorsiflexion"] - angle,

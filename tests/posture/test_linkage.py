@@ -215,3 +215,17 @@ def test_heavier_legs_lower_the_centre_of_mass(which: int, seed: int, share: flo
 def test_measured_lengths_reach_the_linkage() -> None:
     longer = make_athlete(sex="male", stature=1.79, mass=70.0, measured={"span": 1.90})
     assert linkage_of(longer).reach[0] > LINKAGES[0].reach[0]
+
+
+@pytest.mark.parametrize("which", [0, 1], ids=["male", "female"])
+def test_rising_on_the_toes_gives_a_floor_foot_more_reach(which: int) -> None:
+    """Between whole foot and tiptoe the toe stays on the ground and the ankle rises."""
+    stance, linkage = standing(which, False), LINKAGES[which]
+    assert linkage.tiptoe_reach > linkage.floor_reach + 0.03
+    middle = (linkage.tiptoe_reach + linkage.floor_reach) / 2.0
+    shift = np.array([[1.0], [stance.surface.floor_height + middle], [0.3]])
+    joints = assemble(linkage, stance.batch(), np.eye(3)[:, :, None], shift)[:, :, 0]
+    ankle, toe = joints[JOINT["ankle_L"]], joints[JOINT["LF"]]
+    assert toe[1] == pytest.approx(stance.surface.floor_height, abs=1e-9)
+    assert ankle[1] - toe[1] > linkage.ankle_height
+    assert np.linalg.norm(ankle - toe) == pytest.approx(linkage.toe, abs=1e-9)
