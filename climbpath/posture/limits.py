@@ -7,7 +7,7 @@ found, and the choice among centre-of-mass samples.
 from __future__ import annotations
 
 from dataclasses import dataclass
-from math import cos, sin
+from math import cos
 
 import numpy as np
 from numpy.typing import NDArray
@@ -252,13 +252,13 @@ def turned(turn: Array, step: Array) -> Array:
     )
 
 
-def twisted(angle: float) -> Array:
-    """Trunk turned about its own length by ``angle`` [rad], right side to the wall. (3, 3)"""
-    c, s = cos(angle), sin(angle)
-    return np.array([[c, 0.0, s], [0.0, 1.0, 0.0], [-s, 0.0, c]])
+def twisted(angle: Array) -> Array:
+    """Trunks turned about their own length by ``angle`` (N,) [rad]. Shape (3, 3, N)."""
+    c, s, zero = np.cos(angle), np.sin(angle), np.zeros_like(angle)
+    return np.array([[c, zero, s], [zero, zero + 1.0, zero], [-s, zero, c]])
 
 
-def tilted(angle: float) -> Array:
-    """Trunk leaning to the right by ``angle`` [rad] in the surface's plane. Shape (3, 3)."""
-    c, s = cos(angle), sin(angle)
-    return np.array([[c, s, 0.0], [-s, c, 0.0], [0.0, 0.0, 1.0]])
+def tilted(angle: Array) -> Array:
+    """Trunks leaning to the right by ``angle`` (N,) [rad] in the surface's plane. (3, 3, N)"""
+    c, s, zero = np.cos(angle), np.sin(angle), np.zeros_like(angle)
+    return np.array([[c, s, zero], [-s, c, zero], [zero, zero, zero + 1.0]])

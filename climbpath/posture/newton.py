@@ -80,6 +80,10 @@ class Postures:
     turn: Array
     shift: Array
 
+    def take(self, index: Ints) -> Postures:
+        """The chosen stances."""
+        return Postures(self.margin[index], self.turn[..., index], self.shift[:, index])
+
 
 REACH, FOLD, HEIGHT, ACROSS = (slice(4 * k, 4 * k + 4) for k in range(4))
 LIFT, OUT = slice(16, 18), slice(18, 20)

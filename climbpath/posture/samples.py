@@ -172,7 +172,7 @@ def _chunk(
     wide = batch.take(stance)
     goal = lattice.height(level) - wide.origin[1]
     spread = ComGuess(guess.share[stance], guess.lever[:, stance], guess.fixed[:, stance])
-    candidates = _candidates(linkage, postures, stance)
+    candidates = _candidates(wide, postures, stance, line_x)
     misses = np.stack([
         placed(linkage, wide, spread, turn, out, extra, line_x, goal, None)[1]
         for turn, out, extra in candidates
@@ -221,21 +221,31 @@ def _chosen(candidates: list[Candidate], choice: Ints, rows: Ints) -> tuple[Arra
     return turn, out, np.array([c[2] for c in candidates])[choice]
 
 
-def _candidates(linkage: Linkage, postures: Postures, stance: Ints) -> list[Candidate]:
-    """Trunk turns with the distance off the wall: given, or (NaN) as near as clearance lets."""
+def _candidates(
+    wide: StanceBatch, postures: Postures, stance: Ints, line_x: float
+) -> list[Candidate]:
+    """Trunk turns with the distance off the wall: given, or (NaN) as near as clearance lets.
+
+    Leans and twists begin with the side of the line the contacts lie on, so that a mirrored
+    stance tries the mirrored trunks in the same order.
+    """
     own = postures.turn[..., stance]
     count = len(stance)
     near = np.full(count, np.nan)
-    leans = [np.repeat(tilted(angle)[:, :, None], count, axis=2) for angle in (LEAN, -LEAN)]
-    twists = [np.repeat(twisted(angle)[:, :, None], count, axis=2) for angle in (TWIST, -TWIST)]
+    weight = wide.engaged.astype(float)
+    middle = (wide.target[0] * weight).sum(axis=0) - line_x * weight.sum(axis=0)
+    side = np.where(middle > -1e-6, 1.0, -1.0)
+    leans = [tilted(way * LEAN * side) for way in (1.0, -1.0)]
+    twists = [twisted(way * TWIST * side) for way in (1.0, -1.0)]
     return [
-        (own, postures.shift[2, stance], 0.0),
-        (own, near, 0.0),
         (upright(count), near, 0.0),
         (upright(count), near, OUT),
         (leans[0], near, 0.0),
         (leans[1], near, 0.0),
         *((turn, near, extra) for turn in twists for extra in (0.0, OUT)),
+        # Where reach is not what bounds a stance, its own posture is one of many: tried last.
+        (own, near, 0.0),
+        (own, postures.shift[2, stance], 0.0),
     ]
 
 

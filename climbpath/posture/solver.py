@@ -23,6 +23,11 @@ Ints = NDArray[np.int64]
 CHUNK = 4096
 """Stances solved together: arrays of this length stay in the processor's cache."""
 
+TIE = 1e-6
+"""A later start replaces an earlier one only where it gains more than this, m: which of equally
+good postures is kept must not hang on rounding."""
+
+
 @dataclass(frozen=True)
 class _Round:
     """Starts made together, and for whom: doubtful stances whose margin (m) is between two bounds.
@@ -59,13 +64,17 @@ def solve_postures(linkage: Linkage, batch: StanceBatch) -> Postures:
         index = np.flatnonzero(chosen | (number == 0))
         # The few that are tried again are gathered first, so that arrays stay long.
         tried = np.tile(index, len(starts.twists))
-        twist = np.repeat(starts.twists, len(index))
+        which = np.repeat(np.arange(len(starts.twists)), len(index))
+        twist = np.asarray(starts.twists)[which]
         for begin in range(0, len(tried), CHUNK):
             part = slice(begin, begin + CHUNK)
             own = batch.take(tried[part])
             turn, shift = _start(linkage, own, starts, twist[part] * side[tried[part]])
             found, done = descend(linkage, own, turn, shift, starts.steps)
-            _improve(best, found, tried[part])
+            # A stance may stand in the arrays once for each twist: take them one after another.
+            for own_twist in range(len(starts.twists)):
+                mine = np.flatnonzero(which[part] == own_twist)
+                _improve(best, found.take(mine), tried[part][mine])
             certain[tried[part][done]] = True
         if number == 0:
             side = np.where(best.turn[0, 2] >= 0.0, -1.0, 1.0)
@@ -73,13 +82,12 @@ def solve_postures(linkage: Linkage, batch: StanceBatch) -> Postures:
 
 
 def _improve(best: Postures, found: Postures, where: Ints) -> None:
-    """Take over what is better; a stance may stand in ``where`` more than once."""
-    order = np.argsort(found.margin, kind="stable")
-    order = order[found.margin[order] > best.margin[where[order]]]
-    # With repeated places the last assignment stays, which is the largest margin.
-    best.margin[where[order]] = found.margin[order]
-    best.turn[..., where[order]] = found.turn[..., order]
-    best.shift[:, where[order]] = found.shift[:, order]
+    """Take over what is clearly better; each stance stands in ``where`` once."""
+    better = found.margin > best.margin[where] + TIE
+    place = where[better]
+    best.margin[place] = found.margin[better]
+    best.turn[..., place] = found.turn[..., better]
+    best.shift[:, place] = found.shift[:, better]
 
 
 def _start(
