@@ -74,23 +74,23 @@ class PacedMotion:
     """
 
     reaction: float = 0.20
-    least_step: float = 0.15
+    least_step: float = 0.14
     repeat_wait: float = 0.15
     hand_start: float = 0.10
-    foot_start: float = 0.08
-    hand_speed: float = 4.5
-    foot_speed: float = 5.0
+    foot_start: float = 0.06
+    hand_speed: float = 5.0
+    foot_speed: float = 6.0
     settle: float = 0.06
     settle_poor: float = 0.10
     up_speed: dict[tuple[bool, bool], float] = field(
         default_factory=lambda: {
-            (True, True): 3.8,
-            (True, False): 1.9,
-            (False, True): 1.8,
+            (True, True): 5.0,
+            (True, False): 1.4,
+            (False, True): 1.5,
             (False, False): 0.5,
         }
     )
-    side_speed: float = 2.8
+    side_speed: float = 3.0
     take_off_push: float = 0.20
     take_off_speed: float = 2.0
 
