@@ -59,15 +59,16 @@ class SearchGraph:
     reach_distance: Array
 
 
-@dataclass(frozen=True)
 class _Arcs:
-    """Arcs as arrays (M,): tail, head, time [s], mean distance from the line [m], event."""
+    """Arcs as arrays (M,), small since there may be very many: tail, head, time [us], area
+    [mm ms] and event, all int32."""
 
-    tail: Ints
-    head: Ints
-    time: Array
-    mean_off: Array
-    event: Ints
+    def __init__(self, tail: Ints, head: Ints, time: Array, mean_off: Array, event: Ints) -> None:
+        """From time [s] and mean distance from the line [m]."""
+        self.tail, self.head = tail.astype(np.int32), head.astype(np.int32)
+        self.time = np.rint(time * 1e6).astype(np.int32)
+        self.area = np.rint(time * mean_off * 1e6).astype(np.int32)
+        self.event = event.astype(np.int32)
 
 
 def mean_distance(first: Array, second: Array) -> Array:
@@ -103,25 +104,31 @@ def build_graph(
 
 def _compressed(nodes: int, parts: list[_Arcs], off: Array) -> RouteGraph:
     """Sort the arcs into rows; no pair of nodes has two arcs, by how they are made."""
-    tail = np.concatenate([p.tail.astype(np.int32) for p in parts])
-    head = np.concatenate([p.head.astype(np.int32) for p in parts])
-    time = np.concatenate([np.rint(p.time * 1e6).astype(np.int64) for p in parts])
-    area = np.concatenate([np.rint(p.time * p.mean_off * 1e6).astype(np.int64) for p in parts])
-    event = np.concatenate([p.event.astype(np.int32) for p in parts])
-    parts.clear()
-    rows = coo_array((np.arange(len(tail)), (tail, head)), shape=(nodes, nodes)).tocsr()
-    del tail, head
+    tail = np.concatenate([p.tail for p in parts])
+    head = np.concatenate([p.head for p in parts])
+    number = np.arange(len(tail), dtype=np.int32)
+    rows = coo_array((number, (tail, head)), shape=(nodes, nodes)).tocsr()
+    del tail, head, number
+    for part in parts:
+        del part.tail, part.head
     rows.sort_indices()
     order = rows.data
+
+    def sorted_(name: str) -> NDArray[np.int32]:
+        joined = np.concatenate([getattr(p, name) for p in parts])
+        for p in parts:
+            delattr(p, name)
+        return np.asarray(joined[order])
+
     excursion = np.zeros(nodes)
     plain = len(off) * LASTS * 2
     excursion[:plain] = np.repeat(np.abs(off) * 1e3, LASTS * 2)
     return RouteGraph(
         indptr=rows.indptr.astype(np.int64),
-        head=rows.indices.astype(np.int32),
-        time_us=time[order],
-        area=area[order],
-        event=event[order],
+        head=rows.indices.astype(np.int32, copy=False),
+        time_us=sorted_("time").astype(np.int64),
+        area=sorted_("area").astype(np.int64),
+        event=sorted_("event"),
         rank=np.arange(nodes),
         excursion=excursion,
     )
