@@ -123,6 +123,11 @@ class Recoster:
             raise AssertionError(f"no sample of {contacts} at {com_mm}: {gap} mm off")
         return level
 
+    def aside(self, x: float) -> float:
+        """Signed distance from the line; up to 2 mm count as none."""
+        off = x - self.line_x
+        return 0.0 if abs(off) <= 0.002 else off
+
     def travel(self, first: Point, second: Point, support: Contacts, level: bool = False) -> float:
         """Paced travel, each axis at its own speed; ``level`` leaves up to 10 mm of height out."""
         motion = self.motion
@@ -152,7 +157,7 @@ class Recoster:
 
     def cost(self, seconds: float, first: float, second: float, more: Cost = (0, 0)) -> Cost:
         """Time and area of an even way between two x, rounded, added to ``more``."""
-        off = _mean_distance(first - self.line_x, second - self.line_x)
+        off = _mean_distance(self.aside(first), self.aside(second))
         return more[0] + round(seconds * 1e6), more[1] + round(seconds * off * 1e6)
 
     def stays(self, contacts: Contacts, less: Contacts, level: int) -> bool:
@@ -181,10 +186,10 @@ class Recoster:
                 first, second = self.stands(here)[level].com, self.stands(less)[level].com
                 shift = self.travel(first, second, less, level=True)
                 seconds = shift
-                off = _mean_distance(first[0] - self.line_x, second[0] - self.line_x) * shift
+                off = _mean_distance(self.aside(first[0]), self.aside(second[0])) * shift
                 if limb < 2 and last == limb + 1:
                     seconds += self.motion.repeat_wait
-                    off += abs(first[0] - self.line_x) * self.motion.repeat_wait
+                    off += abs(self.aside(first[0])) * self.motion.repeat_wait
                 cost = cost[0] + round(seconds * 1e6), cost[1] + round(off * 1e6)
                 here = less
             else:
@@ -242,7 +247,7 @@ class Recoster:
         pushes = any(c >= 0 or c == FLOOR for c in before[2:])
         if not pushes or not -1e-9 <= rise <= top:
             return found
-        off = self.stands(before)[low].com[0] - self.line_x
+        off = self.aside(self.stands(before)[low].com[0])
         begun = round(motion.take_off_push * 1e6), round(motion.take_off_push * abs(off) * 1e6)
         landing = [limb for limb in range(4) if after[limb] != FREE]
         for order in permutations(landing):
@@ -252,7 +257,7 @@ class Recoster:
             stand = self.stands(here).get(high)
             if stand is None:
                 continue
-            there = stand.com[0] - self.line_x
+            there = self.aside(stand.com[0])
             drift = round(there / FLIGHT_BIN) - round(off / FLIGHT_BIN)
             if abs(drift) > int(FLIGHT_SIDE / FLIGHT_BIN):
                 continue
@@ -268,7 +273,7 @@ class Recoster:
         first, *others = plan.steps
         before = self.codes(first.contacts)
         low = self.level_of(before, first.com_mm)
-        off = abs(self.stands(before)[low].com[0] - self.line_x)
+        off = abs(self.aside(self.stands(before)[low].com[0]))
         start = round(self.motion.reaction * 1e6), round(self.motion.reaction * off * 1e6)
         states: dict[int, tuple[Cost, tuple[int, ...]]] = {0: (start, (0,))}
         for step in others:

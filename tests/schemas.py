@@ -66,7 +66,7 @@ PLAN: dict[str, Any] = strict(
         "lateral_mean_mm": {"type": "number", "minimum": 0},
         "lateral_max_mm": {"type": "number", "minimum": 0},
         "sideways_mm": {"type": "number", "minimum": 0},
-        "path_ratio": NUMBER,
+        "path_ratio": {"type": ["number", "null"]},
         "hand_moves": COUNT,
         "hand_holds": listed(TEXT),
         "margin_min_mm": MAYBE_NUMBER,

@@ -4,7 +4,8 @@ A move is: limbs let go (each release an arc of no time to the stance that is le
 one limb lands (an arc from a sample of the support to a sample of the landing stance, as long as
 the larger of travel and reach), and others may land with it (arcs that add only what their reach
 takes beyond the least step). A move ends with a hand on a hold: nothing here looks at forces, and
-none but a hand keeps a body from tipping off the wall. So any limbs may move together while arcs
+none but a hand keeps a body from tipping off the wall. A strike ends the climb: nothing follows
+it. So any limbs may move together while arcs
 run only between a stance and its supports: their number grows with those links, never with pairs
 of stances.
 """
@@ -23,6 +24,7 @@ from climbpath.errors import TooLargeError
 from climbpath.motion.model import Drive, Motion
 from climbpath.posture.assembly import rest_points
 from climbpath.posture.linkage import Linkage
+from climbpath.posture.newton import ON_LINE
 from climbpath.route.graph import RouteGraph
 from climbpath.route.nodes import LANDED, LASTS, READY, NodeCode
 from climbpath.stance.options import ContactOptions
@@ -69,6 +71,12 @@ class _Arcs:
         self.time = np.rint(time * 1e6).astype(np.int32)
         self.area = np.rint(time * mean_off * 1e6).astype(np.int32)
         self.event = event.astype(np.int32)
+
+
+def off_line(x: Array, line_x: float) -> Array:
+    """Signed distance from the line, (N,) [m]; within ``ON_LINE`` a centre of mass is on it."""
+    off = x - line_x
+    return np.where(np.abs(off) <= ON_LINE, 0.0, off)
 
 
 def mean_distance(first: Array, second: Array) -> Array:
@@ -148,7 +156,9 @@ class _Builder:
                  motion: Motion, line_x: float) -> None:
         self.options, self.stances, self.motion = options, stances, motion
         self.code = NodeCode(stances.samples, options.holds)
-        self.off = stances.com[:, 0] - line_x
+        self.off = off_line(stances.com[:, 0], line_x)
+        struck = (stances.contacts >= 0) & options.strike[np.maximum(stances.contacts, 0)]
+        self.over = np.asarray(struck.any(axis=1))
         self.number = np.diff(stances.first_sample)
         engaged = stances.contacts != FREE
         self.hands = engaged[:, :2].sum(axis=1)
@@ -204,6 +214,8 @@ class _Builder:
     def releases(self, limb: int) -> _Arcs:
         """A limb lets go: no time but that of the shift the support takes, and a hand's wait."""
         sample, left = self._same_level(limb)
+        going = ~self.over[self.stances.sample_stance[sample]]
+        sample, left = sample[going], left[going]
         time = self._shift(sample, left, self.stances.sample_stance[left])
         off = mean_distance(self.off[sample], self.off[left])
         sample, left, last = self._lasts(sample, left)
@@ -237,6 +249,7 @@ class _Builder:
         stances = self.stances
         landing = np.flatnonzero((stances.support[:, limb] >= 0) & (self.hands > 0))
         support = stances.support[landing, limb]
+        landing, support = landing[~self.over[support]], support[~self.over[support]]
         row, start = _ragged(stances.first_sample[support], self.number[support])
         pair, end = _ragged(stances.first_sample[landing][row], self.number[landing][row])
         start, drive = start[pair], support[row[pair]]
@@ -257,6 +270,7 @@ class _Builder:
         """A free limb lands with the move that has just ended: only what its reach adds."""
         end, start = self._same_level(limb)
         held = self.hands[self.stances.sample_stance[end]] > 0
+        held &= ~self.over[self.stances.sample_stance[start]]
         end, start = end[held], start[held]
         extra = np.maximum(self._reach(limb, end) - self.motion.least_step, 0.0)
         time = np.maximum(extra, self._shift(start, end, self.stances.sample_stance[start]))
@@ -273,7 +287,7 @@ class _Builder:
         owner = stances.sample_stance
         contacts = stances.contacts
         pushes = ((contacts[:, 2:] >= 0) | (contacts[:, 2:] == FLOOR)).any(axis=1)
-        leaving = np.flatnonzero(pushes[owner])
+        leaving = np.flatnonzero((pushes & ~self.over)[owner])
         single = (self.hands == 1) & (self.feet == 0)
         landing = np.flatnonzero(single[owner])
         if not len(leaving) or not len(landing):

@@ -14,7 +14,7 @@ from numpy.typing import NDArray
 from climbpath.contacts import FREE, Limb
 from climbpath.errors import ClimbpathError
 from climbpath.motion.model import Drive, Motion
-from climbpath.route.build import FLIGHT_BIN, SAME_HEIGHT, SearchGraph
+from climbpath.route.build import FLIGHT_BIN, SAME_HEIGHT, SearchGraph, off_line
 from climbpath.route.nodes import LANDED, PHASES
 from climbpath.route.shortest import Route
 from climbpath.stance.options import ContactOptions
@@ -61,7 +61,8 @@ class Recoster:
         return int(self.search.code.sample(np.array(node)))
 
     def _off(self, node: int) -> float:
-        return float(self.search.stances.com[self._sample(node), 0]) - self.line_x
+        x = self.search.stances.com[[self._sample(node)], 0]
+        return float(off_line(x, self.line_x)[0])
 
     def _contacts(self, node: int) -> Ints:
         stances = self.search.stances

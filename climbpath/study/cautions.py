@@ -4,7 +4,7 @@ from __future__ import annotations
 
 CAUTIONS = (
     "The model is of a body on a wall, not of a person.",
-    "A predicted gain smaller than the stated interval means nothing.",
+    "A predicted gain smaller than the stated interval or step error means nothing.",
     "Pulling and leaping at full effort injures fingers, elbows and shoulders, most of all in "
     "athletes who are still growing.",
     "Try a new sequence on a rope, warmed up, and with a qualified coach.",

@@ -16,7 +16,7 @@ from climbpath.errors import UsageError
 from climbpath.motion.model import Motion, PacedMotion
 from climbpath.posture.linkage import Linkage, linkage_of
 from climbpath.posture.samples import Lattice
-from climbpath.route.build import SearchGraph, build_graph
+from climbpath.route.build import SearchGraph, build_graph, off_line
 from climbpath.route.demands import Demand, Opening, Touch
 from climbpath.route.nodes import LANDED, LASTS, READY
 from climbpath.stance.enumerate import Allowed
@@ -96,6 +96,13 @@ def check_conditions(wall: Wall, conditions: Conditions) -> None:
     wanted = {*conditions.include, *(name for _, name in conditions.hands)}
     wrong += [f"--avoid {name}: it is asked for as well" for name in conditions.avoid
               if name in wanted]
+    avoided = set(conditions.avoid)
+    if avoided.issuperset(wall.finish):
+        wrong.append("--avoid leaves no finish hold")
+    if wall.starts and not any(
+        all(not avoided.issuperset(start.allowed[limb]) for limb in Limb) for start in wall.starts
+    ):
+        wrong.append("--avoid leaves no allowed start")
     if not wrong:
         by_id = {hold.id: hold for hold in wall.holds}
         wrong += [f"--hand {limb}={name}: that hold is for feet" for limb, name in conditions.hands
@@ -153,7 +160,7 @@ def prepare(
     search = build_graph(options, linkage, stances, rule, wall.line_x, conditions.flights, memory)
     report("routes", 0.8)
     sources, held = _sources(wall, options, search, conditions)
-    off = np.abs(stances.com[search.code.sample(sources), 0] - wall.line_x)
+    off = np.abs(off_line(stances.com[search.code.sample(sources), 0], wall.line_x))
     reaction = np.full(len(sources), round(rule.reaction * 1e6))
     return Climb(
         wall, athlete, conditions, options, linkage, rule, search, sources, reaction,

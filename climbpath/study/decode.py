@@ -12,6 +12,7 @@ from climbpath.motion.capacity import capacities_of
 from climbpath.motion.cones import hold_cones
 from climbpath.motion.rest import rest_loads
 from climbpath.posture.assembly import JOINTS, assemble
+from climbpath.route.build import off_line
 from climbpath.route.nodes import LANDED, PHASES
 from climbpath.route.shortest import Route
 from climbpath.stance.enumerate import batch_of
@@ -76,11 +77,12 @@ def plan_of(climb: Climb, route: Route, rank: int) -> Plan:
     all_samples = search.code.sample(route.nodes)
     path = search.stances.com[all_samples[all_samples >= 0]]
     moves = np.diff(path, axis=0)
-    gained = path[-1, 1] - path[0, 1]
+    along = climb.options.surface.to_surface(path[[0, -1]])[:, 1]
+    gained = float(along[1] - along[0])
     events = [step for step in steps[1:] for limb in step.moved
               if limb in ("LH", "RH") and step.contacts[limb] != "free"]
     margins = [step.margin_mm for step in steps if step.margin_mm is not None]
-    off = np.abs(path[:, 0] - climb.wall.line_x)
+    off = np.abs(off_line(path[:, 0], climb.wall.line_x))
     seconds = total / 1e6
     return Plan(
         rank=rank,
@@ -95,7 +97,7 @@ def plan_of(climb: Climb, route: Route, rank: int) -> Plan:
         lateral_mean_mm=area / 1e3 / seconds,
         lateral_max_mm=float(off.max()) * 1e3,
         sideways_mm=float(np.abs(moves[:, 0]).sum()) * 1e3,
-        path_ratio=float(np.linalg.norm(moves, axis=1).sum() / gained) if gained > 1e-6 else 1.0,
+        path_ratio=float(np.linalg.norm(moves, axis=1).sum()) / gained if gained > 1e-3 else None,
         hand_moves=len(events),
         hand_holds=_hand_holds(steps),
         margin_min_mm=min(margins) if margins else None,

@@ -39,6 +39,10 @@ DIFFERENCE = 0.2
 
 MAX_SOLVES = 60
 
+LEAST_GAIN = 1.0
+"""Least lateral area, mm s, that a slower trade-off must save to be listed."""
+
+
 PACING_CAUTION = (
     "Times follow a simple pacing rule and look at no force. Loads are those of holding each "
     "position still: above 1, or where none is given, a position cannot be held but only passed "
@@ -130,7 +134,8 @@ def _solve(
     ties = (inner.area, inner.time_us, hand_move_costs(climb, inner))
     weight = weighted(inner, time_factor, area_factor)
     if request.aim == "narrow":
-        found = bottleneck_route(inner, inner.excursion, inner.time_us, demanded.sources,
+        # Whole millimetres: less is not worth a second.
+        found = bottleneck_route(inner, np.rint(inner.excursion), inner.time_us, demanded.sources,
                                  demanded.targets, ties)
         route = None if found is None else found.route
     else:
@@ -207,7 +212,10 @@ def plan(
 def trade_off_points(
     climb: Climb, request: PlanRequest
 ) -> tuple[tuple[float, float, float], ...]:
-    """Trade-offs that some weighting of time and lateral area finds: s, mm s, mm."""
+    """Trade-offs that some weighting of time and lateral area finds: s, mm s, mm.
+
+    A slower one is only kept where it saves ``LEAST_GAIN`` of lateral area.
+    """
     time, area, held = _start_costs(climb, climb.sources)
     first = Sources.at(climb.sources, time, ties=(area,))
     demanded = with_demands(climb.search.graph, climb.demands, first, climb.targets, held)
@@ -217,10 +225,12 @@ def trade_off_points(
         demanded.graph, demanded.sources.nodes, demanded.targets, demanded.sources.cost,
         demanded.sources.ties[0], (hand_move_costs(climb, demanded.graph),),
     )
-    return tuple(
-        (p.time_us / 1e6, p.area / 1e3, float(demanded.graph.excursion[p.route.nodes].max()))
-        for p in points
-    )
+    kept: list[tuple[float, float, float]] = []
+    for p in points:
+        if not kept or p.area / 1e3 <= kept[-1][1] - LEAST_GAIN:
+            widest = float(demanded.graph.excursion[p.route.nodes].max())
+            kept.append((p.time_us / 1e6, p.area / 1e3, widest))
+    return tuple(kept)
 
 
 def _with_lattice_error(

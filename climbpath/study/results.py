@@ -53,7 +53,7 @@ class Plan:
     lateral_mean_mm: float
     lateral_max_mm: float
     sideways_mm: float
-    path_ratio: float
+    path_ratio: float | None
     hand_moves: int
     hand_holds: tuple[str, ...]
     margin_min_mm: float | None

@@ -123,10 +123,21 @@ def _by_condition(
                if getattr(conditions, f.name) != getattr(plain, f.name)]
     for name in changed:
         freed = replace(conditions, **{name: getattr(plain, name)})
-        climb = prepare(wall, athlete, freed, motion, step)
-        if _route_under(climb, np.zeros(climb.search.graph.nodes)) is not None:
+        if _opens(wall, athlete, freed, motion, step):
+            for hold in conditions.avoid if name == "avoid" and len(conditions.avoid) > 1 else ():
+                fewer = tuple(other for other in conditions.avoid if other != hold)
+                if _opens(wall, athlete, replace(conditions, avoid=fewer), motion, step):
+                    return f"without --avoid {hold} there is a way"
             return CONDITION_WORDS[name]
     return None
+
+
+def _opens(
+    wall: Wall, athlete: Athlete, conditions: Conditions, motion: Motion | None, step: float
+) -> bool:
+    """Whether there is a way under these conditions."""
+    climb = prepare(wall, athlete, conditions, motion, step)
+    return _route_under(climb, np.zeros(climb.search.graph.nodes)) is not None
 
 
 def _route_under(climb: Climb, value: Array) -> Route | None:
