@@ -9,7 +9,7 @@ Definitions (docstrings of ``motion/model.py``, ``route/build.py`` and ``route/n
 
 - a limb lets go: the shift sideways at one level to where the support holds the centre of mass,
   and the wait where a hand moves again and the other hand has not moved since;
-- the first limb lands: the largest of travel, reach, and the least step;
+- the first limb lands: the largest of travel, reach, and the least step; a hand then has a hold;
 - each further limb lands with it: what its reach takes beyond the least step, or the shift at one
   level, whichever is larger;
 - a flight: the push, then the time in the air to a hold for one hand;
@@ -82,7 +82,12 @@ class Recoster:
         self.area_first = False
 
     def stands(self, contacts: Contacts) -> dict[int, Stand]:
-        """Samples of one stance by level; none where it is not possible."""
+        """Samples of one stance by level; none where it is not possible.
+
+        A foot smears only while a hand has a hold.
+        """
+        if SMEAR in contacts and all(contact == FREE for contact in contacts[:2]):
+            return {}
         if contacts not in self.known:
             self.learn([contacts])
         return self.known[contacts]
@@ -226,6 +231,8 @@ class Recoster:
             for order in permutations(landing):
                 first = order[0]
                 here = _with(support, first, after[first])
+                if all(contact == FREE for contact in here[:2]):
+                    continue
                 stand, left = self.stands(here).get(high), self.stands(support)[low]
                 if stand is None or not self.stays(here, support, high):
                     continue

@@ -3,11 +3,10 @@
 A move is: limbs let go (each release an arc of no time to the stance that is left, its support),
 one limb lands (an arc from a sample of the support to a sample of the landing stance, as long as
 the larger of travel and reach), and others may land with it (arcs that add only what their reach
-takes beyond the least step). A move ends with a hand on a hold: nothing here looks at forces, and
-none but a hand keeps a body from tipping off the wall. A strike ends the climb: nothing follows
-it. So any limbs may move together while arcs
-run only between a stance and its supports: their number grows with those links, never with pairs
-of stances.
+takes beyond the least step). Whenever a limb lands, a hand has a hold: nothing here looks at
+forces, and none but a hand keeps a body from tipping off the wall. A strike ends the climb:
+nothing follows it. So any limbs may move together while arcs run only between a stance and its
+supports: their number grows with those links, never with pairs of stances.
 """
 
 from __future__ import annotations

@@ -13,7 +13,7 @@ import pytest
 
 from climbpath.motion.model import PacedMotion
 from climbpath.study.climb import LATTICE_STEP, Conditions
-from climbpath.study.plan import PlanRequest, trade_off_points
+from climbpath.study.plan import LEAST_GAIN, PlanRequest, trade_off_points
 from climbpath.study.results import Plan
 from climbpath.study.sequence import format_plan, parse_sequences
 from climbpath.wall import Wall
@@ -242,13 +242,15 @@ def test_trade_offs_run_from_the_fastest_to_the_straightest(seed: int) -> None:
     points = trade_off_points(climb(wall), PlanRequest(trade_off=True))
     fast, straight = best(wall), best(wall, request("straight"))
     assert points[0][:2] == (fast.lattice_time_s, fast.lateral_area_mm_s)
-    assert points[-1][1] == straight.lateral_area_mm_s
-    assert points[-1][0] == straight.lattice_time_s
+    # A slower point is listed only where it saves enough.
+    assert 0.0 <= points[-1][1] - straight.lateral_area_mm_s < LEAST_GAIN
+    assert points[-1][0] <= straight.lattice_time_s
+    assert (-np.diff([p[1] for p in points]) >= LEAST_GAIN - 1e-9).all()
     times, areas = [p[0] for p in points], [p[1] for p in points]
     assert times == sorted(set(times))
     assert areas == sorted(set(areas), reverse=True)
     slopes = np.diff(areas) / np.diff(times)
-    assert (np.diff(slopes) > 0.0).all()  # supported points are the corners of a convex curve
+    assert (np.diff(slopes) > 0.0).all()  # corners of a convex curve, also with some left out
 
 
 @pytest.mark.parametrize("seed", SEEDS)
