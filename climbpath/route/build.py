@@ -44,6 +44,9 @@ FLIGHT_BIN = 0.10
 FLIGHT_SIDE = 0.35
 """Flights are sorted by take-off x in bins of this width, and drift sideways by at most that, m."""
 
+PART = 100_000
+"""Samples looked at together where only their reach is needed."""
+
 BYTES_PER_ARC = 75
 """Peak memory of building and searching, per arc, measured."""
 
@@ -332,10 +335,14 @@ def reach_distances(options: ContactOptions, linkage: Linkage, stances: StanceSe
     from climbpath.stance.enumerate import batch_of
 
     owner = stances.sample_stance
-    batch = batch_of(options, linkage, stances.contacts).take(owner)
     result = np.zeros((stances.samples, 4))
-    for limb in Limb:
-        rest = stances.shift + np.einsum("ijn,j->in", stances.turn, rest_points(linkage, limb))
-        gap = np.sqrt(((batch.target[:, limb] - rest) ** 2).sum(axis=0))
-        result[:, limb] = np.where(batch.engaged[limb], gap, 0.0)
+    # In parts: a batch of all samples would be many times the size of the result.
+    for begin in range(0, stances.samples, PART):
+        part = slice(begin, begin + PART)
+        batch = batch_of(options, linkage, stances.contacts[owner[part]])
+        turn, shift = stances.turn[..., part], stances.shift[:, part]
+        for limb in Limb:
+            rest = shift + np.einsum("ijn,j->in", turn, rest_points(linkage, limb))
+            gap = np.sqrt(((batch.target[:, limb] - rest) ** 2).sum(axis=0))
+            result[part, limb] = np.where(batch.engaged[limb], gap, 0.0)
     return result

@@ -83,7 +83,12 @@ def stance_set(
         linkage, batch, Postures(found.margin, found.turn, found.shift), line_x, lattice
     )
     points = contact_points(options, linkage, found.contacts)
-    world = batch.take(samples.stance).to_world(samples.com[:, None, :])[:, 0].T
+    # Row by row, since a batch of all samples would be many times the size of what is needed.
+    world = np.stack([
+        batch.origin[i, samples.stance]
+        + sum(batch.axes[j, i, samples.stance] * samples.com[j] for j in range(3))
+        for i in range(3)
+    ], axis=1)
     first = np.searchsorted(samples.stance, np.arange(len(keys) + 1))
     return StanceSet(
         contacts=found.contacts,
