@@ -11,7 +11,6 @@ supports: their number grows with those links, never with pairs of stances.
 
 from __future__ import annotations
 
-from collections.abc import Callable
 from dataclasses import dataclass
 
 import numpy as np
@@ -26,6 +25,7 @@ from climbpath.posture.linkage import Linkage
 from climbpath.posture.newton import ON_LINE
 from climbpath.route.graph import RouteGraph
 from climbpath.route.nodes import LANDED, LASTS, READY, NodeCode
+from climbpath.stance.enumerate import batch_of
 from climbpath.stance.options import ContactOptions
 from climbpath.stance.stances import StanceSet
 
@@ -49,9 +49,6 @@ PART = 100_000
 
 BYTES_PER_ARC = 75
 """Peak memory of building and searching, per arc, measured."""
-
-Progress = Callable[[int, int], None]
-
 
 @dataclass(frozen=True)
 class SearchGraph:
@@ -332,8 +329,6 @@ class _Builder:
 
 def reach_distances(options: ContactOptions, linkage: Linkage, stances: StanceSet) -> Array:
     """How far each limb's contact is from where the limb would rest, (P, 4) [m]; free limbs 0."""
-    from climbpath.stance.enumerate import batch_of
-
     owner = stances.sample_stance
     result = np.zeros((stances.samples, 4))
     # In parts: a batch of all samples would be many times the size of the result.

@@ -92,7 +92,7 @@ def plan_of(climb: Climb, route: Route, rank: int) -> Plan:
         chance_clean=None,
         time_interval_s=None,
         lattice_error_s=None,
-        pad_off_s=_pad_off(climb, legs, samples),
+        pad_off_s=_pad_off(climb, legs),
         lateral_area_mm_s=area / 1e3,
         lateral_mean_mm=area / 1e3 / seconds,
         lateral_max_mm=float(off.max()) * 1e3,
@@ -116,7 +116,7 @@ def _hand_holds(steps: tuple[PlanStep, ...]) -> tuple[str, ...]:
     return tuple(seen)
 
 
-def _pad_off(climb: Climb, legs: list[Leg], samples: list[int]) -> float | None:
+def _pad_off(climb: Climb, legs: list[Leg]) -> float | None:
     """When the last foot leaves the ground: the beginning of the move in which it does."""
     stances = climb.search.stances
     owner = stances.sample_stance
