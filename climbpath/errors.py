@@ -55,3 +55,11 @@ class NoWayUpError(ClimbpathError):
     """Nothing gets through; the result that goes with it says why."""
 
     exit_code = 3
+
+
+class NoPacingError(ClimbpathError):
+    """No motion along a given path keeps within the limits. ``place`` is the grid point where."""
+
+    def __init__(self, message: str, place: int) -> None:
+        self.place = place
+        super().__init__(f"grid point {place}: {message}")

@@ -22,7 +22,8 @@ from climbpath.motion.model import GRAVITY
 from climbpath.posture.batch import StanceBatch
 from climbpath.posture.limits import joint_limits, limb_geometry, point_limits, turned, upright
 from climbpath.posture.linkage import Linkage
-from climbpath.route.build import FLIGHT_BIN, FLIGHT_SIDE, MAX_DROP, MAX_RISE
+from climbpath.route.arcs import MAX_DROP, MAX_RISE
+from climbpath.route.flights import FLIGHT_BIN, FLIGHT_SIDE
 from climbpath.stance.enumerate import batch_of
 from climbpath.wall import Wall
 from tests.recost import Contacts, Recoster, Stand

@@ -34,7 +34,8 @@ from climbpath.posture.assembly import REST_FOOT, REST_HAND
 from climbpath.posture.linkage import linkage_of
 from climbpath.posture.newton import Postures
 from climbpath.posture.samples import Lattice, com_samples
-from climbpath.route.build import FLIGHT_BIN, FLIGHT_SIDE, MAX_DROP, MAX_RISE
+from climbpath.route.arcs import MAX_DROP, MAX_RISE
+from climbpath.route.flights import FLIGHT_BIN, FLIGHT_SIDE
 from climbpath.stance.enumerate import batch_of, solve
 from climbpath.stance.options import contact_options, contact_points
 from climbpath.stance.stances import SAME_POINT

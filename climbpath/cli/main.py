@@ -16,6 +16,8 @@ from climbpath.errors import ClimbpathError
 
 COMMANDS = {
     "plan": ("climbpath.cli.plan", "Best sequences for one athlete on one wall."),
+    "calibrate": ("climbpath.cli.calibrate", "Fit an athlete's capacities to measured runs."),
+    "evidence": ("climbpath.cli.evidence", "The model against observed finals runs."),
     "wall": ("climbpath.cli.wall", "Check, draw and convert wall files."),
     "athlete": ("climbpath.cli.athlete", "Write and show athlete files."),
 }

@@ -1,6 +1,6 @@
 """What each limb can bear in a posture, in body weights: pure functions on arrays of stances.
 
-    hand   quality × (press + (pull − press) × level), level 0 at the hip to 1 at the shoulder
+    hand   quality × (press + (pull − press) × level), level 0 at the hip to 1 at the shoulder,
     foot   quality × push × (1 down to the bent share between 90 and 140 degrees of the knee)
     smear  the same, at most the smear's own
 
@@ -43,13 +43,16 @@ _PLAIN = {
     "foot_speed_m_s": (0.1, inf),
     "fade_share": (0.0, 0.95),
     "turn_rad_s2": (0.0, inf),
+    "reach_speed_m_s": (0.5, 30.0),
+    "settle_s": (0.0, 1.0),
+    "reaction_s": (0.0, 2.0),
 }
 """Keys without sides, and the values they may have."""
 
 KEYS = (*(f"{name}{side}_bw" for name in SIDED for side in ("", "_left", "_right")), *_PLAIN)
 """Every key of an athlete's [capacity] table that is read here."""
 
-_OWN = ("hand_", "foot_", "fade_", "turn_")
+_OWN = ("hand_", "foot_", "fade_", "turn_", "reach_", "settle_", "reaction_")
 """What begins like this is meant for here: an unknown one is a mistake in the file."""
 
 
@@ -57,7 +60,8 @@ _OWN = ("hand_", "foot_", "fade_", "turn_")
 class Capacities:
     """One athlete's. ``hand_pull``, ``hand_press``, ``foot_push``, ``foot_smear`` (2,): left and
     right [body weights]; ``foot_bent_share``, ``hand_matched_share``, ``fade``: shares;
-    ``hand_speed``, ``foot_speed``: V0 [m/s]; ``turn`` [rad/s²].
+    ``hand_speed``, ``foot_speed``: V0 [m/s]; ``turn`` [rad/s²]; ``reach_speed`` [m/s] of a free
+    limb; ``settle`` [s] from a contact until it bears; ``reaction`` [s] to the start signal.
     """
 
     hand_pull: Array
@@ -70,6 +74,14 @@ class Capacities:
     foot_speed: float
     fade: float
     turn: float
+    reach_speed: float = 5.0
+    settle: float = 0.06
+    reaction: float = 0.20
+
+    @property
+    def speed(self) -> float:
+        """The one speed of shortening at which the fast form lets all force be gone [m/s]."""
+        return min(self.hand_speed, self.foot_speed)
 
 
 @dataclass(frozen=True)
@@ -144,6 +156,9 @@ def capacities_of(athlete: Athlete) -> Capacities:
         foot_speed=values["foot_speed_m_s"],
         fade=values["fade_share"],
         turn=values["turn_rad_s2"],
+        reach_speed=values["reach_speed_m_s"],
+        settle=values["settle_s"],
+        reaction=values["reaction_s"],
     )
 
 

@@ -4,6 +4,9 @@ The unknowns of a stance are a small turn w and shift u of the trunk in its own 
 spare reach t. A target that stood at v in trunk axes then stands at exp(-w) v - u, so
 dv = -u + v x w + (w (w.v) - v |w|^2) / 2 to second order. Limits are functions g >= 0.
 The curvature of that turn is what lets a Newton step see how leaning brings a root nearer.
+
+Calls on arrays cost more than the arithmetic in them once few stances are left, so terms are
+summed in blocks, with few calls a step.
 """
 
 from __future__ import annotations
@@ -11,126 +14,128 @@ from __future__ import annotations
 import numpy as np
 from numpy.typing import NDArray
 
+from climbpath.posture.limits import PointLimits
+
 Array = NDArray[np.float64]
 
 SIZE = 7
 """Unknowns of a stance: three of the turn, three of the shift, and the spare reach."""
 
-_PAIRS = ((0, 0), (0, 1), (0, 2), (1, 1), (1, 2), (2, 2))
-_SLOT = {pair: k for k, pair in enumerate(_PAIRS)} | {(b, a): k for k, (a, b) in enumerate(_PAIRS)}
+SPARE, RIGHT = 6, 7
+"""Rows of ``System.lower``: that of the spare reach, and the right-hand side."""
+
+
+def point_slopes(limits: PointLimits) -> Array:
+    """Slopes (6, P, N) of limits of trunk points over turn and shift: o x n, and n."""
+    n, o = limits.normal, limits.offset
+    slope = np.empty((6, *n.shape[1:]))
+    for i in range(3):
+        j, k = (i + 1) % 3, (i + 2) % 3
+        np.multiply(o[j], n[k], out=slope[i])
+        slope[i] -= o[k] * n[j]
+    slope[3:, : limits.fixed] = 0.0
+    slope[3:, limits.fixed:] = n[:, limits.fixed:]
+    return slope
 
 
 class System:
-    """The Newton systems of N stances being summed: ``matrix[i][j]`` for i >= j, and ``right``."""
+    """The Newton systems of N stances being summed.
+
+    ``lower`` (8, 7, N): the lower triangle of the matrix (what stands above the diagonal means
+    nothing), and the right-hand side as its last row. ``bent`` (3, 3, N): what bends with the
+    turn, still to be made symmetric.
+    """
 
     def __init__(self, count: int, damping: tuple[Array, Array]) -> None:
-        self.matrix = [[np.zeros(count) for _ in range(i + 1)] for i in range(SIZE)]
-        self.right = [np.zeros(count) for _ in range(SIZE)]
-        for i in range(3):
-            self.matrix[i][i] += damping[0]
-            self.matrix[3 + i][3 + i] += damping[1]
+        self.lower = np.zeros((SIZE + 1, SIZE, count))
+        self.bent = np.zeros((3, 3, count))
+        diagonal = np.einsum("iin->in", self.lower[:SPARE, :SPARE])
+        diagonal[:3] = damping[0]
+        diagonal[3:] = damping[1]
 
-    def add_limbs(
-        self, point: Array, inner: list[Array], pull: Array, bend: Array, reach_pull: Array
-    ) -> None:
+    def add_limbs(self, point: Array, rows: Array, bend: Array) -> None:
         """Limits that depend on targets seen from the trunk.
 
-        ``point`` (3, L, N): v of each limb. ``inner``: six arrays (L, N), the symmetric matrix
-        over v of sum(weight g' g'^T - multiplier g''). ``pull`` (3, L, N): sum of right-hand
-        coefficients times slopes; ``bend`` (3, L, N): sum of multipliers times slopes (the
-        turn's curvature); ``reach_pull`` (3, L, N): weight times slope of the reach limits.
+        ``point`` (3, L, N): v of each limb. ``rows`` (5, 5, L, N): in its first three columns
+        (the others are filled here) the symmetric matrix over v of
+        sum(weight g' g'^T - multiplier g''), then a row of minus what the spare reach adds to it
+        (weight times slope of the reach limits) and one of right-hand coefficients times slopes.
+        ``bend`` (3, L, N): sum of multipliers times slopes (the turn's curvature).
         """
-        vx, vy, vz = point
-        m = [[inner[_SLOT[i, j]] for j in range(3)] for i in range(3)]
-        # B = M [v]x, where [v]x w = v x w.
-        b = [[row[1] * vz - row[2] * vy, row[2] * vx - row[0] * vz, row[0] * vy - row[1] * vx]
-             for row in m]
-        dot = bend[0] * vx + bend[1] * vy + bend[2] * vz
-        v = (vx, vy, vz)
-        # Turn-turn block: [v]x^T B minus the turn's own curvature.
+        lower = self.lower
+        rows[:, 3:] = rows[:, :2]
+        wrapped = np.concatenate([point, point[:2]])
+        # Each row times [v]x, where [v]x w = v x w.
+        crossed = rows[:, 1:4] * wrapped[2:]
+        crossed -= rows[:, 2:] * wrapped[1:4]
         for i in range(3):
             j, k = (i + 1) % 3, (i + 2) % 3
-            for col in range(i + 1):
-                value = v[k] * b[j][col] - v[j] * b[k][col]
-                value -= 0.5 * (bend[i] * v[col] + bend[col] * v[i])
-                if i == col:
-                    value += dot
-                self.matrix[i][col] += value.sum(axis=0)
-                self.matrix[3 + i][3 + col] += m[i][col].sum(axis=0)
-            for col in range(3):
-                self.matrix[3 + i][col] -= b[i][col].sum(axis=0)
-            turned = pull[j] * v[k] - pull[k] * v[j]
-            self.right[i] += turned.sum(axis=0)
-            self.right[3 + i] -= pull[i].sum(axis=0)
-            # Reach limits fall by one with each metre of t.
-            self.matrix[6][i] -= (reach_pull[j] * v[k] - reach_pull[k] * v[j]).sum(axis=0)
-            self.matrix[6][3 + i] += reach_pull[i].sum(axis=0)
+            twice = crossed[j, : i + 1] * point[k]
+            twice -= crossed[k, : i + 1] * point[j]
+            lower[i, : i + 1] += twice.sum(axis=1)
+        turned, shifted = crossed.sum(axis=2), rows[:, :3].sum(axis=2)
+        lower[3:SPARE, :3] -= turned[:3]
+        lower[3:SPARE, 3:SPARE] += shifted[:3]
+        lower[SPARE:, :3] += turned[3:]
+        lower[SPARE:, 3:SPARE] -= shifted[3:]
+        self.bent += np.einsum("iln,jln->ijn", bend, point)
 
-    def add_plane(
-        self, normal: Array, offset: Array, weight: Array, right: Array, multiplier: Array,
-        shifts: bool = True, spare: bool = False,
+    def add_points(
+        self, limits: PointLimits, slope: Array, weight: Array, right: Array, multiplier: Array
     ) -> None:
-        """A limit that is linear in a point fixed in the trunk: n.(p + R o) + const >= 0.
+        """Limits that are linear in points fixed in the trunk, of the first n of the N stances.
 
-        ``normal`` (3, N) n in trunk axes, ``offset`` (3,) or (3, N) o. ``shifts`` False for a
-        direction (which a shift does not change); ``spare`` True where t counts against it.
+        ``slope`` (6, P, n): that of ``point_slopes``; ``weight``, ``right`` and ``multiplier``
+        (P, n).
         """
-        n, o = normal, offset
-        turn = [o[1] * n[2] - o[2] * n[1], o[2] * n[0] - o[0] * n[2], o[0] * n[1] - o[1] * n[0]]
-        slope = [*turn, *(n if shifts else ())]
-        size = len(slope)
-        for i in range(size):
-            weighted = weight * slope[i]
-            for j in range(i + 1):
-                self.matrix[i][j] += weighted * slope[j]
-            if spare:
-                self.matrix[6][i] -= weighted
-            self.right[i] += right * slope[i]
-        dot = n[0] * o[0] + n[1] * o[1] + n[2] * o[2]
+        fixed, count = limits.fixed, weight.shape[1]
+        lower, bent = self.lower[..., :count], self.bent[..., :count]
+        weighted = weight * slope
+        lower[:3, :3] += np.einsum("ipn,jpn->ijn", weighted[:3], slope[:3])
+        lower[3:SPARE, :SPARE] += np.einsum(
+            "ipn,jpn->ijn", weighted[3:, fixed:], slope[:, fixed:]
+        )
+        lower[RIGHT, :SPARE] += np.einsum("ipn,pn->in", slope, right)
+        for row in np.flatnonzero(limits.spare):
+            lower[SPARE, :SPARE] -= weighted[:, row]
+            lower[SPARE, SPARE] += weight[row]
+            lower[RIGHT, SPARE] -= right[row]
+        pressed = multiplier * limits.normal
+        bent += np.einsum("ipn,jpn->ijn", pressed, limits.offset)
+        # n.(w x u): a turn after a shift moves the point sideways.
+        moved = pressed[:, fixed:].sum(axis=1)
         for i in range(3):
-            for j in range(i + 1):
-                value = 0.5 * (n[i] * o[j] + n[j] * o[i])
-                if i == j:
-                    value = value - dot
-                self.matrix[i][j] -= multiplier * value
-        if shifts:
-            # n.(w x u): a turn after a shift moves the point sideways.
-            for i in range(3):
-                j, k = (i + 1) % 3, (i + 2) % 3
-                self.matrix[3 + j][i] -= multiplier * n[k]
-                self.matrix[3 + k][i] += multiplier * n[j]
-        if spare:
-            self.matrix[6][6] += weight
-            self.right[6] -= right
+            j, k = (i + 1) % 3, (i + 2) % 3
+            lower[3 + j, i] -= moved[k]
+            lower[3 + k, i] += moved[j]
 
-    def solve(self, floor: float = 1e-2) -> list[Array]:
-        """Solve all systems by LDL^T with pivots kept above ``floor``.
+    def close(self) -> None:
+        """Bring what bends with the turn, -(b v^T + v b^T) / 2 + b.v, into the matrix."""
+        bent = self.bent
+        self.lower[:3, :3] -= 0.5 * (bent + bent.transpose(1, 0, 2))
+        trace = bent[0, 0] + bent[1, 1] + bent[2, 2]
+        for i in range(3):
+            self.lower[i, i] += trace
 
-        Lifting a pivot that came out small or negative turns the step into one of descent.
+    def solve(self, floor: float = 1e-2) -> Array:
+        """Solve all systems, (7, N), by LDL^T with pivots kept above ``floor``.
+
+        Lifting a pivot that came out small or negative turns the step into one of descent. The
+        right-hand side is worked on as one row more of the matrix.
         """
-        lower = self.matrix
-        pivot: list[Array] = []
-        scaled: list[list[Array]] = []
+        work = self.lower
+        spare = np.empty((SIZE, SIZE - 1, work.shape[2]))
         for j in range(SIZE):
-            row: list[Array] = []
-            value = lower[j][j].copy()
-            for k in range(j):
-                entry = lower[j][k].copy()
-                for i in range(k):
-                    entry -= row[i] * scaled[k][i]
-                row.append(entry)
-            lead = [row[k] / pivot[k] for k in range(j)]
-            for k in range(j):
-                value -= row[k] * lead[k]
-            pivot.append(np.where(value > floor, value, np.maximum(np.abs(value), 1.0)))
-            scaled.append(lead)
-        result = [r.copy() for r in self.right]
-        for j in range(SIZE):
-            for k in range(j):
-                result[j] -= scaled[j][k] * result[k]
-        for j in range(SIZE):
-            result[j] /= pivot[j]
-        for j in reversed(range(SIZE)):
-            for k in range(j):
-                result[k] -= scaled[j][k] * result[j]
+            pivot = work[j, j]
+            if pivot.size and pivot.min() <= floor:
+                pivot = np.where(pivot > floor, pivot, np.maximum(np.abs(pivot), 1.0))
+            column = work[j + 1:, j]
+            if j < SIZE - 1:
+                lead = np.divide(column[:-1], pivot, out=work[j, j + 1:])
+                product = np.multiply(column[:, None], lead, out=spare[: SIZE - j, : SIZE - 1 - j])
+                work[j + 1:, j + 1:] -= product
+            column[-1] /= pivot
+        result: Array = work[RIGHT]
+        for j in range(SIZE - 1, 0, -1):
+            result[:j] -= work[:j, j] * result[j]
         return result

@@ -18,6 +18,21 @@ Array = NDArray[np.float64]
 Ints = NDArray[np.int64]
 
 
+KEPT_BYTES = 31 << 20
+"""A block just under the size from which glibc takes every block from the system anew."""
+
+
+def keep_memory() -> None:
+    """Have the C library keep freed memory for the next arrays instead of giving it back.
+
+    The solver makes and drops many arrays of about 100 kB. By default glibc fetches such blocks
+    from the system each time, and that takes longer than the arithmetic on them; once a large
+    block has been freed, its threshold stands there (mallopt(3), M_MMAP_THRESHOLD). The block is
+    never touched, so it takes no memory. Elsewhere this does nothing.
+    """
+    np.empty(KEPT_BYTES, dtype=np.uint8)
+
+
 @dataclass(frozen=True)
 class StanceBatch:
     """N stances in base axes: right, up along and out of the section each one belongs to.
@@ -56,9 +71,12 @@ class StanceBatch:
 
     def take(self, index: slice | Ints | NDArray[np.bool_]) -> StanceBatch:
         """The chosen stances."""
-        return StanceBatch(
-            *(np.ascontiguousarray(getattr(self, f.name)[..., index]) for f in fields(self))
-        )
+        values = (getattr(self, f.name) for f in fields(self))
+        if isinstance(index, slice):
+            return StanceBatch(*(np.ascontiguousarray(value[..., index]) for value in values))
+        chosen = np.flatnonzero(index) if index.dtype == bool else index
+        # Unlike an index in brackets, take leaves the stances adjacent in memory at once.
+        return StanceBatch(*(value.take(chosen, axis=-1) for value in values))
 
     def to_world(self, points: Array) -> Array:
         """Base axes to world. Shape (3, ..., N) both ways. [m]"""

@@ -44,27 +44,33 @@ class LimbGeometry:
 
 
 def limb_geometry(linkage: Linkage, batch: StanceBatch, turn: Array, shift: Array) -> LimbGeometry:
-    """Seen from a trunk at ``shift`` (3, N) [m], turned by ``turn`` (3, 3, N).
+    """Seen from a trunk at ``shift`` (3, N) [m], turned by ``turn`` (3, 3, N)."""
+    return geometry_of(linkage, batch.target, turn, shift)
+
+
+def geometry_of(linkage: Linkage, target: Array, turn: Array, shift: Array) -> LimbGeometry:
+    """The same for contacts ``target`` (3, 4, N) [m].
 
     The shoulder lifts by up to ``shoulder_rise`` along the trunk to meet a hand above it: the
     distance is that from the contact to the segment the joint can slide on, a convex function.
     """
-    dx = [batch.target[i] - shift[i] for i in range(3)]
-    point = np.stack(
-        [dx[0] * turn[0, j] + dx[1] * turn[1, j] + dx[2] * turn[2, j] for j in range(3)]
-    )
+    point = np.einsum("iln,ijn->jln", target - shift[:, None], turn)
     away = point - linkage.roots.T[:, :, None]
     rise = np.zeros_like(away[1])
-    rise[:2] = np.clip(away[1, :2], 0.0, linkage.shoulder_rise)
+    above = away[1, :2]
+    np.minimum(np.maximum(above, 0.0), linkage.shoulder_rise, out=rise[:2])
     rising = np.zeros(rise.shape, dtype=bool)
-    rising[:2] = (away[1, :2] > 0.0) & (away[1, :2] < linkage.shoulder_rise)
-    away[1] -= rise
-    distance = np.maximum(np.sqrt(away[0] ** 2 + away[1] ** 2 + away[2] ** 2), 0.02)
-    return LimbGeometry(point, away / distance, distance, rise, rising)
+    np.logical_and(above > 0.0, above < linkage.shoulder_rise, out=rising[:2])
+    above -= rise[:2]
+    square = away * away
+    distance = square[0]
+    distance += square[1]
+    distance += square[2]
+    np.sqrt(distance, out=distance)
+    np.maximum(distance, 0.02, out=distance)
+    away /= distance
+    return LimbGeometry(point, away, distance, rise, rising)
 
-
-UPPER = ((0, 0), (0, 1), (0, 2), (1, 1), (1, 2), (2, 2))
-"""Order of the entries of symmetric 3 by 3 matrices."""
 
 HEIGHT_SIDE = np.array([1.0, 1.0, -1.0, -1.0])
 """Hands stay above the hips, feet below."""
@@ -78,43 +84,56 @@ class JointLimits:
     not above its hip (a straight leg lifts to about a right angle, from memory). ``across``
     (4, N): the contact is not too far on the other side of the body. ``lift`` (2, N) with slope
     (3, 2, N): the thigh at full flexion still lets the lower leg come down to the toe,
-    |toe - knee| >= lower leg in the plane of hip, toe and trunk, and ``lift_curve`` (6, 2, N) its
-    second derivatives (xx, xy, xz, yy, yz, zz). ``out`` (2, N): the toe's distance
-    to the side, at most that of a straight leg at full abduction.
+    |toe - knee| >= lower leg in the plane of hip, toe and trunk. Its second derivatives are
+    ``circle`` circle^T / ``gap`` along the circle about the knee plus ``around`` around^T
+    ``before_level`` around the trunk's axis: (3, 2, N) and (2, N). ``out`` (2, N): the toe's
+    distance to the side, at most that of a straight leg at full abduction.
     """
 
     height: Array
     across: Array
     lift: Array
     lift_slope: Array
-    lift_curve: list[Array]
+    circle: Array
+    gap: Array
+    around: Array
+    before_level: Array
     out: Array
 
 
 def joint_limits(linkage: Linkage, geometry: LimbGeometry) -> JointLimits:
     """Evaluate the joint ranges of N trunks."""
     away = geometry.along * geometry.distance
-    side = LIMB_SIDE[:, None]
     height = np.empty_like(geometry.distance)
     height[:2] = geometry.point[1, :2]
-    height[2:] = -away[1, 2:]
+    np.negative(away[1, 2:], out=height[2:])
     x, y, z = away[:, 2:]
     knee_across, knee_up = linkage.knee_limit
-    level = np.sqrt(x**2 + z**2 + SOFT**2)
-    gap = np.maximum(np.sqrt((level - knee_across) ** 2 + (y - knee_up) ** 2), 1e-6)
-    before, above = (level - knee_across) / gap, (y - knee_up) / gap
-    # Second derivatives: along the circle about the knee, and around the trunk's axis.
-    along_circle = (-above * x / level, before, -above * z / level)
-    around = (-z / level, np.zeros_like(z), x / level)
-    curve = [along_circle[i] * along_circle[j] / gap + before * around[i] * around[j] / level
-             for i, j in UPPER]
+    level = np.sqrt(x * x + z * z + SOFT**2)
+    before, above = level - knee_across, y - knee_up
+    gap = np.maximum(np.sqrt(before * before + above * above), 1e-6)
+    before /= gap
+    above /= gap
+    slope, circle, around = (np.empty_like(away[:, 2:]) for _ in range(3))
+    np.divide(x, level, out=around[2])
+    np.divide(z, level, out=around[0])
+    np.multiply(before, around[::2], out=slope[2::-2])
+    slope[1] = above
+    np.multiply(above, around[::2], out=circle[2::-2])
+    np.negative(circle, out=circle)
+    circle[1] = before
+    np.negative(around[0], out=around[0])
+    around[1] = 0.0
     return JointLimits(
         height=height,
-        across=linkage.across[:, None] + side * away[0],
+        across=linkage.across[:, None] + LIMB_SIDE[:, None] * away[0],
         lift=gap - linkage.lower_leg[1],
-        lift_slope=np.stack([before * x / level, above, before * z / level]),
-        lift_curve=curve,
-        out=linkage.out_limit - side[2:] * x,
+        lift_slope=slope,
+        circle=circle,
+        gap=gap,
+        around=around,
+        before_level=before / level,
+        out=linkage.out_limit - LIMB_SIDE[2:, None] * x,
     )
 
 
@@ -123,15 +142,19 @@ TURN_LIMIT = cos(TRUNK_TURN)
 
 
 @dataclass(frozen=True)
-class PointLimit:
-    """A limit linear in a trunk point: ``value`` (N,), ``normal`` (3, N) in trunk axes."""
+class PointLimits:
+    """P limits, each linear in a point of the trunk: n . (p + R o) + const >= 0.
+
+    ``value`` (P, N); ``normal`` n (3, P, N) in trunk axes; ``offset`` o (3, P, 1) or (3, P, N).
+    ``spare`` (P,) bool: the spare reach counts against it. The first ``fixed`` of them are limits
+    of a direction, which a shift does not change.
+    """
 
     value: Array
     normal: Array
     offset: Array
-    shifts: bool
-    spare: bool
-    active: NDArray[np.bool_] | None = None
+    spare: NDArray[np.bool_]
+    fixed: int = 0
 
 
 @dataclass(frozen=True)
@@ -149,52 +172,128 @@ def point_layout(batch: StanceBatch) -> PointLayout:
     return PointLayout(tuple(planes), tuple(foot for foot in (2, 3) if batch.floor[foot].any()))
 
 
+def trunk_limits(
+    linkage: Linkage, plane: Array, turn: Array, shift: Array, layout: PointLayout
+) -> PointLimits:
+    """Tilt and turn of the trunk, then trunk clear of the surface.
+
+    ``plane`` (4, K, N): normals and offsets of the planes of the layout (``planes_of``).
+    """
+    count = shift.shape[1]
+    number = 2 + len(layout.planes)
+    normal, value = np.empty((3, number, count)), np.empty((number, count))
+    offset, least = np.zeros((3, number, 1)), np.empty((number, 1))
+    normal[:, 0], normal[:, 1] = turn[1], turn[2]
+    offset[1, 0], offset[2, 1] = 1.0, 1.0
+    value[0], value[1] = turn[1, 1], turn[2, 2]
+    least[0], least[1] = TILT_LIMIT, TURN_LIMIT
+    np.einsum("ijn,ikn->jkn", turn, plane[:3], out=normal[:, 2:])
+    np.einsum("ikn,in->kn", plane[:3], shift, out=value[2:])
+    value[2:] += plane[3]
+    for row, (which, _) in enumerate(layout.planes, start=2):
+        least[row] = (linkage.pelvis_space, linkage.chest_space)[which]
+        if which:
+            offset[1, row] = linkage.chest_height
+            value[row] += linkage.chest_height * normal[1, row]
+    value -= least
+    return PointLimits(value, normal, offset, np.zeros(number, dtype=bool), 2)
+
+
+def planes_of(batch: StanceBatch, layout: PointLayout) -> Array:
+    """The planes that the trunk keeps clear of, (4, K, N) in the order of the layout."""
+    return np.stack([batch.plane[which, slot] for which, slot in layout.planes], axis=1)
+
+
+def trunk_active(batch: StanceBatch, layout: PointLayout) -> NDArray[np.bool_]:
+    """Which stances each of the trunk's limits counts for, (P, N).
+
+    A second plane counts only where it is another than the first.
+    """
+    active = np.ones((2 + len(layout.planes), batch.size), dtype=bool)
+    for row, (which, slot) in enumerate(layout.planes, start=2):
+        if slot:
+            active[row] = (batch.plane[which, 1] != batch.plane[which, 0]).any(axis=0)
+    return active
+
+
+@dataclass(frozen=True)
+class Ground:
+    """The ground as N stances see it, each field as in ``StanceBatch``."""
+
+    vertical: Array
+    floor_level: Array
+    out: Array
+    floor_out: Array
+
+
+def ground_of(batch: StanceBatch, part: NDArray[np.int64] | None = None) -> Ground:
+    """The ground of the chosen stances (None: of all)."""
+    values = (batch.vertical, batch.floor_level, batch.out, batch.floor_out)
+    return Ground(*(v if part is None else v.take(part, axis=-1) for v in values))
+
+
+def floor_limits(
+    linkage: Linkage, ground: Ground, turn: Array, shift: Array, spare: Array, feet: tuple[int, ...]
+) -> PointLimits:
+    """Feet on the floor: within tiptoe reach, not folded too far, ground before the surface."""
+    count = shift.shape[1]
+    number = 3 * len(feet)
+    normal, value = np.empty((3, number, count)), np.empty((number, count))
+    offset = np.zeros((3, number, 1))
+    up, ahead = _into_trunk(turn, ground.vertical), _into_trunk(turn, ground.out)
+    height = _dot(ground.vertical, shift) - ground.floor_level
+    before = _dot(ground.out, shift) - ground.floor_out - TOE_SPACE
+    for row, foot in zip(range(0, number, 3), feet, strict=True):
+        across, along, off = root = linkage.roots[foot]
+        hip = height + (across * up[0] + along * up[1] + off * up[2])
+        np.subtract(linkage.tiptoe_reach - spare, hip, out=value[row])
+        np.subtract(hip, linkage.fold[foot], out=value[row + 1])
+        # The ground point below the hip lies before the surface, also of a slab.
+        value[row + 2] = before + (across * ahead[0] + along * ahead[1] + off * ahead[2])
+        np.negative(up, out=normal[:, row])
+        normal[:, row + 1], normal[:, row + 2] = up, ahead
+        offset[:, row:row + 3] = root[:, None, None]
+    return PointLimits(value, normal, offset, np.arange(number) % 3 == 0)
+
+
+@dataclass(frozen=True)
+class PointLimit:
+    """One limit of a trunk point: its values (N,), whether a shift changes it, whether the spare
+    reach counts against it, and for which stances it counts (None: all)."""
+
+    value: Array
+    shifts: bool
+    spare: bool
+    active: NDArray[np.bool_] | None = None
+
+
 def point_limits(
     linkage: Linkage, batch: StanceBatch, turn: Array, shift: Array, spare: Array,
     layout: PointLayout | None = None,
 ) -> list[PointLimit]:
-    """Trunk clear of the surface, trunk tilt and turn, and feet on the floor."""
+    """Trunk tilt and turn, trunk clear of the surface, and feet on the floor, one by one."""
     chosen = layout or point_layout(batch)
-    limits: list[PointLimit] = []
-    offsets = (np.zeros(3), np.array([0.0, linkage.chest_height, 0.0]))
-    spaces = (linkage.pelvis_space, linkage.chest_space)
-    for which, slot in chosen.planes:
-        plane, offset = batch.plane[which, slot], offsets[which]
-        normal = _into_trunk(turn, plane[:3])
-        value = _dot(plane[:3], shift) + plane[3] + _dot(offset, normal) - spaces[which]
-        active = None
-        if slot:
-            # Only where the second plane is another than the first does it count at all.
-            active = np.asarray((plane != batch.plane[which, 0]).any(axis=0))
-        limits.append(PointLimit(value, normal, offset, True, False, active))
-    up, out = np.array([0.0, 1.0, 0.0]), np.array([0.0, 0.0, 1.0])
-    limits.append(PointLimit(turn[1, 1] - TILT_LIMIT, turn[1], up, False, False))
-    limits.append(PointLimit(turn[2, 2] - TURN_LIMIT, turn[2], out, False, False))
-    for foot in chosen.feet:
-        active = batch.floor[foot]
-        normal = _into_trunk(turn, batch.vertical)
-        root = linkage.roots[foot]
-        height = _dot(batch.vertical, shift) + _dot(root, normal) - batch.floor_level
-        limits.append(
-            PointLimit(linkage.tiptoe_reach - spare - height, -normal, root, True, True, active)
-        )
-        limits.append(PointLimit(height - linkage.fold[foot], normal, root, True, False, active))
-        # The ground point below the hip lies before the surface, also of a slab.
-        ahead = _into_trunk(turn, batch.out)
-        value = _dot(batch.out, shift) + _dot(root, ahead) - batch.floor_out - TOE_SPACE
-        limits.append(PointLimit(value, ahead, root, True, False, active))
+    trunk = trunk_limits(linkage, planes_of(batch, chosen), turn, shift, chosen)
+    limits = [
+        PointLimit(value, row >= trunk.fixed, False, None if active.all() else active)
+        for row, (value, active) in enumerate(
+            zip(trunk.value, trunk_active(batch, chosen), strict=True))
+    ]
+    if chosen.feet:
+        floor = floor_limits(linkage, ground_of(batch), turn, shift, spare, chosen.feet)
+        limits += [PointLimit(value, True, bool(spares), batch.floor[chosen.feet[row // 3]])
+                   for row, (value, spares) in enumerate(
+                       zip(floor.value, floor.spare, strict=True))]
     return limits
 
 
 def _into_trunk(turn: Array, vector: Array) -> Array:
     """R^T n for N turns and vectors. Shapes (3, 3, N), (3, N) -> (3, N)."""
-    return np.stack(
-        [turn[0, j] * vector[0] + turn[1, j] * vector[1] + turn[2, j] * vector[2] for j in range(3)]
-    )
+    return np.asarray(np.einsum("ijn,in->jn", turn, vector))
 
 
 def _dot(first: Array, second: Array) -> Array:
-    return np.asarray(first[0] * second[0] + first[1] * second[1] + first[2] * second[2])
+    return np.asarray(np.einsum("in,in->n", first, second))
 
 
 def slack(
@@ -204,22 +303,33 @@ def slack(
 
     The hard limits are folds, joint ranges and clearance; tilt and turn count in trunk lengths.
     """
-    count = batch.size
     geometry = limb_geometry(linkage, batch, turn, shift)
-    spare = np.where(batch.engaged, batch.reach - geometry.distance, np.inf).min(axis=0)
-    fold = geometry.distance - batch.fold
-    hard = np.where(batch.engaged, fold, np.inf).min(axis=0)
     joints = joint_limits(linkage, geometry)
-    for value in (joints.height, joints.across, joints.lift, joints.out):
-        engaged = batch.engaged[-len(value):]
-        hard = np.minimum(hard, np.where(engaged, value, np.inf).min(axis=0))
-    zero = np.zeros(count)
-    for limit in point_limits(linkage, batch, turn, shift, zero):
-        value = limit.value if limit.active is None else np.where(limit.active, limit.value, np.inf)
-        if limit.spare:
-            spare = np.minimum(spare, value)
-        else:
-            hard = np.minimum(hard, value if limit.shifts else value * linkage.trunk)
+    off = np.where(batch.engaged, 0.0, np.inf)
+    spare = (batch.reach - geometry.distance + off).min(axis=0)
+    least = np.minimum(geometry.distance - batch.fold, joints.height)
+    np.minimum(least, joints.across, out=least)
+    np.minimum(least[2:], joints.lift, out=least[2:])
+    np.minimum(least[2:], joints.out, out=least[2:])
+    least += off
+    hard = least.min(axis=0)
+    layout = point_layout(batch)
+    trunk = trunk_limits(linkage, planes_of(batch, layout), turn, shift, layout)
+    np.minimum(hard, trunk.value[:2].min(axis=0) * linkage.trunk, out=hard)
+    for row, (which, slot) in enumerate(layout.planes, start=2):
+        value = trunk.value[row]
+        if slot:
+            other = (batch.plane[which, 1] != batch.plane[which, 0]).any(axis=0)
+            value = np.where(other, value, np.inf)
+        np.minimum(hard, value, out=hard)
+    if layout.feet:
+        part = np.flatnonzero(batch.floor.any(axis=0))
+        floor = floor_limits(linkage, ground_of(batch, part), turn.take(part, axis=-1),
+                             shift.take(part, axis=-1), np.zeros(len(part)), layout.feet)
+        stands = np.repeat(batch.floor[list(layout.feet)][:, part], 3, axis=0)
+        value = np.where(stands, floor.value, np.inf)
+        spare[part] = np.minimum(spare[part], value[floor.spare].min(axis=0))
+        hard[part] = np.minimum(hard[part], value[~floor.spare].min(axis=0))
     return spare, hard
 
 
@@ -230,26 +340,22 @@ def upright(count: int) -> Array:
 
 def turned(turn: Array, step: Array) -> Array:
     """R exp(w) for N turns (3, 3, N) and steps w (3, N) (Rodrigues' formula)."""
-    angle_squared = step[0] ** 2 + step[1] ** 2 + step[2] ** 2
+    angle_squared = np.einsum("in,in->n", step, step)
     angle = np.sqrt(np.maximum(angle_squared, 1e-16))
     first = np.sin(angle) / angle
-    second = (1.0 - np.cos(angle)) / angle**2
-    x, y, z = step
-    spin = np.empty_like(turn)
+    second = (1.0 - np.cos(angle)) / (angle * angle)
+    spin = (second * step)[:, None] * step
+    diagonal = 1.0 - second * angle_squared
     for i in range(3):
-        for j in range(3):
-            spin[i, j] = second * step[i] * step[j]
-        spin[i, i] += 1.0 - second * angle_squared
-    spin[0, 1] -= first * z
-    spin[1, 0] += first * z
-    spin[0, 2] += first * y
-    spin[2, 0] -= first * y
-    spin[1, 2] -= first * x
-    spin[2, 1] += first * x
-    return np.stack(
-        [np.stack([turn[i, 0] * spin[0, j] + turn[i, 1] * spin[1, j] + turn[i, 2] * spin[2, j]
-                   for j in range(3)]) for i in range(3)]
-    )
+        spin[i, i] += diagonal
+    x, y, z = first * step
+    spin[0, 1] -= z
+    spin[1, 0] += z
+    spin[0, 2] += y
+    spin[2, 0] -= y
+    spin[1, 2] -= x
+    spin[2, 1] += x
+    return np.asarray(np.einsum("ijn,jkn->ikn", turn, spin))
 
 
 def twisted(angle: Array) -> Array:

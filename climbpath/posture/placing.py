@@ -18,6 +18,7 @@ from climbpath.posture.batch import StanceBatch
 from climbpath.posture.linkage import LIMB_SIDE, Linkage
 
 Array = NDArray[np.float64]
+Ints = NDArray[np.int64]
 
 MOVES_WITH_END = (0.0, 0.5, 0.8, 1.0)
 """How much of an end's movement the four joints of a limb make, roughly: used for first guesses."""
@@ -30,6 +31,11 @@ class ComGuess:
     share: Array
     lever: Array
     fixed: Array
+
+    def take(self, index: Ints) -> ComGuess:
+        """The chosen stances."""
+        return ComGuess(self.share[index], self.lever.take(index, axis=-1),
+                        self.fixed.take(index, axis=-1))
 
 
 def com_guess(linkage: Linkage, batch: StanceBatch, weights: Array) -> ComGuess:

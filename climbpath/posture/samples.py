@@ -20,9 +20,10 @@ from climbpath.contacts import Limb
 from climbpath.posture.assembly import assemble
 from climbpath.posture.batch import StanceBatch
 from climbpath.posture.com import com_of, joint_weights
+from climbpath.posture.iterates import Aim
 from climbpath.posture.limits import slack, tilted, twisted, upright
 from climbpath.posture.linkage import Linkage
-from climbpath.posture.newton import Aim, Postures, nearer_line
+from climbpath.posture.newton import Postures, nearer_line
 from climbpath.posture.placing import ComGuess, com_guess, placed
 
 Array = NDArray[np.float64]
@@ -171,12 +172,12 @@ def _chunk(
     stance, level = _levels(linkage, batch, postures, guess, lattice)
     wide = batch.take(stance)
     goal = lattice.height(level) - wide.origin[1]
-    spread = ComGuess(guess.share[stance], guess.lever[:, stance], guess.fixed[:, stance])
+    spread = guess.take(stance)
     candidates = _candidates(wide, postures, stance, line_x)
-    misses = np.stack([
-        placed(linkage, wide, spread, turn, out, extra, line_x, goal, None)[1]
-        for turn, out, extra in candidates
-    ])
+    places, misses = [], np.empty((len(candidates), len(stance)))
+    for number, candidate in enumerate(candidates):
+        place, misses[number] = placed(linkage, wide, spread, *candidate, line_x, goal, None)
+        places.append(place)
     # Earlier candidates win ties, and small gains are not worth an odd posture.
     misses += 0.002 * np.arange(len(candidates))[:, None]
     kept: list[_Found] = []
@@ -187,20 +188,18 @@ def _chunk(
             break
         choice = np.argmin(misses[:, open_], axis=0)
         misses[choice, open_] = np.inf
-        turn, out, extra = _chosen(candidates, choice, open_)
+        turn, out, extra, shift = _chosen(candidates, places, choice, open_)
         own = wide.take(open_)
-        part = ComGuess(spread.share[open_], spread.lever[:, open_], spread.fixed[:, open_])
         # Roughly placed, a trunk that breaks a limit by far is not worth assembling.
-        shift, _miss = placed(linkage, own, part, turn, out, extra, line_x, goal[open_], None)
-        likely = np.minimum(*slack(linkage, own, turn, shift)) > -ROUGH
-        trial = np.flatnonzero(likely)
+        trial = np.flatnonzero(np.minimum(*slack(linkage, own, turn, shift)) > -ROUGH)
         good, shift, com, spare = _assembled(
-            linkage, own.take(trial), weights, part, trial, turn[..., trial], out[trial],
-            extra[trial], line_x, goal[open_[trial]],
+            linkage, own.take(trial), weights, spread.take(open_[trial]),
+            turn.take(trial, axis=-1), shift.take(trial, axis=-1), out[trial], extra[trial], line_x,
+            goal[open_[trial]],
         )
         done = trial[good]
         kept.append(
-            _Found(open_[done], turn[..., done], shift[:, good], com[:, good], spare[good])
+            _Found(open_[done], turn.take(done, axis=-1), shift[:, good], com[:, good], spare[good])
         )
         open_ = np.delete(open_, done)
     found = _Found.join(kept)
@@ -211,14 +210,18 @@ def _chunk(
 Candidate = tuple[Array, Array, float]
 
 
-def _chosen(candidates: list[Candidate], choice: Ints, rows: Ints) -> tuple[Array, Array, Array]:
-    """Turn, distance off the wall and extra distance of one candidate for each of some rows."""
-    turn, out = np.empty((3, 3, len(rows))), np.empty(len(rows))
-    for number, candidate in enumerate(candidates):
+def _chosen(
+    candidates: list[Candidate], places: list[Array], choice: Ints, rows: Ints
+) -> tuple[Array, Array, Array, Array]:
+    """Turn, distance off the wall, extra distance and place of one candidate for each row."""
+    turn, out, shift = np.empty((3, 3, len(rows))), np.empty(len(rows)), np.empty((3, len(rows)))
+    for number, (candidate, place) in enumerate(zip(candidates, places, strict=True)):
         own = np.flatnonzero(choice == number)
-        turn[..., own] = candidate[0][..., rows[own]]
-        out[own] = candidate[1][rows[own]]
-    return turn, out, np.array([c[2] for c in candidates])[choice]
+        where = rows[own]
+        turn[..., own] = candidate[0].take(where, axis=-1)
+        out[own] = candidate[1][where]
+        shift[:, own] = place.take(where, axis=-1)
+    return turn, out, np.array([c[2] for c in candidates])[choice], shift
 
 
 def _candidates(
@@ -229,7 +232,7 @@ def _candidates(
     Leans and twists begin with the side of the line the contacts lie on, so that a mirrored
     stance tries the mirrored trunks in the same order.
     """
-    own = postures.turn[..., stance]
+    own = postures.turn.take(stance, axis=-1)
     count = len(stance)
     near = np.full(count, np.nan)
     weight = wide.engaged.astype(float)
@@ -259,8 +262,8 @@ def _bring_nearer(
         return
     index = found.index[off]
     batch = wide.take(index)
-    share, lever = guess.share[index], guess.lever[:, index]
-    turn, shift, com = found.turn[..., off], found.shift[:, off], found.com[:, off]
+    share, lever = guess.share[index], guess.lever.take(index, axis=-1)
+    turn, shift, com = (v.take(off, axis=-1) for v in (found.turn, found.shift, found.com))
     for steps in NEARER_STEPS:
         # The guess of the centre of mass is made exact where the posture now stands.
         fixed = com - share * shift - np.einsum("ijn,jn->in", turn, lever)
@@ -278,18 +281,19 @@ def _bring_nearer(
 
 
 def _assembled(
-    linkage: Linkage, batch: StanceBatch, weights: Array, guess: ComGuess, index: Ints, turn: Array,
-    out: Array, extra: Array, line_x: float, goal: Array,
+    linkage: Linkage, batch: StanceBatch, weights: Array, guess: ComGuess, turn: Array,
+    shift: Array, out: Array, extra: Array, line_x: float, goal: Array,
 ) -> tuple[NDArray[np.bool_], Array, Array, Array]:
-    """Assemble, correct the height, and check all limits: good, shift, com, spare."""
-    own = ComGuess(guess.share[index], guess.lever[:, index], guess.fixed[:, index])
-    lever = np.einsum("ijn,jn->in", turn, own.lever)
-    error: Array | None = None
-    shift = com = np.zeros((3, len(index)))
-    for _ in range(CORRECTIONS + 1):
-        shift, _miss = placed(linkage, batch, own, turn, out, extra, line_x, goal, error)
+    """Assemble, correct the height, and check all limits: good, shift, com, spare.
+
+    ``shift`` is where the guess of the centre of mass, not yet corrected, places the trunk.
+    """
+    rough = np.einsum("ijn,jn->in", turn, guess.lever) + guess.fixed
+    com = com_of(weights, assemble(linkage, batch, turn, shift))
+    for _ in range(CORRECTIONS):
+        error = com - guess.share * shift - rough
+        shift, _miss = placed(linkage, batch, guess, turn, out, extra, line_x, goal, error)
         com = com_of(weights, assemble(linkage, batch, turn, shift))
-        error = com - own.share * shift - lever - own.fixed
     spare, hard = slack(linkage, batch, turn, shift)
     height = (batch.vertical * com).sum(axis=0)
     good = (spare >= -REACH_TOLERANCE) & (hard >= -REACH_TOLERANCE)
@@ -306,7 +310,7 @@ def _gather(
     has[stance[found.index]] = True
     bare = np.flatnonzero(~has)
     tight = batch.take(bare)
-    turn, shift = postures.turn[..., bare], postures.shift[:, bare]
+    turn, shift = postures.turn.take(bare, axis=-1), postures.shift.take(bare, axis=-1)
     com = com_of(weights, assemble(linkage, tight, turn, shift))
     height = (tight.vertical * com).sum(axis=0) + tight.origin[1]
     nearest = np.rint((height - lattice.anchor) / lattice.step).astype(np.int64)
@@ -317,5 +321,5 @@ def _gather(
     shifts = np.concatenate([found.shift, shift], axis=-1)
     coms = np.concatenate([found.com, com], axis=-1)
     spares = np.concatenate([found.spare, np.maximum(postures.margin[bare], 0.0)])
-    return Samples(stances[order], levels[order], turns[..., order], shifts[:, order],
-                   coms[:, order], spares[order])
+    return Samples(stances[order], levels[order],
+                   *(values.take(order, axis=-1) for values in (turns, shifts, coms, spares)))

@@ -12,7 +12,7 @@ from dataclasses import dataclass
 import numpy as np
 from numpy.typing import NDArray
 
-from climbpath.posture.batch import StanceBatch
+from climbpath.posture.batch import StanceBatch, keep_memory
 from climbpath.posture.limits import upright
 from climbpath.posture.linkage import Linkage
 from climbpath.posture.newton import Postures, descend
@@ -55,6 +55,7 @@ ROUNDS = (
 
 def solve_postures(linkage: Linkage, batch: StanceBatch) -> Postures:
     """Largest spare reach of N stances. Every stance has at least one engaged or floor limb."""
+    keep_memory()
     count = batch.size
     best = Postures(np.full(count, -np.inf), upright(count), np.zeros((3, count)))
     certain = np.zeros(count, dtype=bool)

@@ -1,8 +1,11 @@
-"""Numbering of search nodes: a centre-of-mass sample, which hand moved last, and the phase.
+"""Numbering of search nodes: a centre-of-mass sample, its upward speed, which hand moved last, and
+the phase.
 
-Node = (sample * 3 + last) * 2 + phase. ``last`` is 0 when the hands have moved together or not at
-all, 1 after the left, 2 after the right. ``phase`` LANDED: a move has just ended here and limbs
-that were free may land with it; READY: the next move may begin, and limbs may let go.
+Node = ((sample * speeds + speed) * 3 + last) * phases + phase. ``speed`` is the number of a speed
+level. ``last`` is 0 when the hands have moved together or not at all, 1 after the left, 2 after the
+right. Phase 0 is READY: the next move may begin, and limbs may let go. Phases from LANDED on: a
+move has just ended here, of the first, second, … class, and limbs that were free may land with it
+or go on from it. Classes tell how long the move lasted, and the last one may be that of hands.
 Flight nodes follow after all of these.
 """
 
@@ -19,32 +22,61 @@ Ints = NDArray[np.int64]
 
 LASTS = 3
 READY, LANDED = 0, 1
-PHASES = 2
 
 
 @dataclass(frozen=True)
 class NodeCode:
-    """Codes nodes and landing events of a graph over ``samples`` samples and ``holds`` holds."""
+    """Codes nodes and landing events of a graph over ``samples`` samples and ``holds`` holds, with
+    ``speeds`` speed levels and ``classes`` of landings.
+    """
 
     samples: int
     holds: int
+    speeds: int = 1
+    classes: int = 1
+
+    @property
+    def phases(self) -> int:
+        """READY and one for each class of landings."""
+        return 1 + self.classes
+
+    @property
+    def per_sample(self) -> int:
+        """Nodes of one sample."""
+        return self.speeds * LASTS * self.phases
 
     @property
     def plain(self) -> int:
         """Number of nodes that stand for a sample (flight nodes have higher numbers)."""
-        return self.samples * LASTS * PHASES
+        return self.samples * self.per_sample
 
-    def node(self, sample: Ints, last: Ints | int, phase: int) -> Ints:
+    def node(self, sample: Ints, speed: Ints | int, last: Ints | int, phase: Ints | int) -> Ints:
         """Node numbers, same shape as ``sample``."""
-        return (sample * LASTS + last) * PHASES + phase
+        return ((sample * self.speeds + speed) * LASTS + last) * self.phases + phase
 
     def sample(self, node: Ints) -> Ints:
         """Sample of plain nodes, -1 for flight nodes."""
-        return np.where(node < self.plain, node // (LASTS * PHASES), -1)
+        return np.where(node < self.plain, node // self.per_sample, -1)
+
+    def speed(self, node: Ints) -> Ints:
+        """Speed level of plain nodes."""
+        return node // (self.phases * LASTS) % self.speeds
 
     def last(self, node: Ints) -> Ints:
         """Which hand moved last, of plain nodes."""
-        return node // PHASES % LASTS
+        return node // self.phases % LASTS
+
+    def phase(self, node: Ints) -> Ints:
+        """Phase of plain nodes."""
+        return node % self.phases
+
+    def all_landed(self, samples: Ints) -> Ints:
+        """Every node of some samples in which a move has just ended."""
+        return np.concatenate([
+            self.node(samples, speed, last, phase)
+            for speed in range(self.speeds) for last in range(LASTS)
+            for phase in range(LANDED, self.phases)
+        ]).astype(np.int64)
 
     @property
     def events(self) -> int:

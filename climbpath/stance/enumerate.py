@@ -3,11 +3,14 @@
 A stance can only be possible if every stance with one contact fewer is. So pairs of contacts are
 tried first (those near enough by a tree search), triples only where all three pairs are possible,
 and full stances only where all four triples are: nothing is solved that a smaller stance already
-rules out, and nothing that two far-apart stances would need is ever formed.
+rules out, and nothing that two far-apart stances would need is ever formed. Stances with smears and
+strikes are made from possible ones, and solved along with the next level, since solving many at a
+time is what is quick.
 """
 
 from __future__ import annotations
 
+import math
 from collections.abc import Callable, Iterator
 from dataclasses import dataclass
 from itertools import combinations
@@ -19,8 +22,11 @@ from scipy.spatial import cKDTree
 from climbpath.contacts import FLOOR, FREE, SMEAR, Limb
 from climbpath.errors import TooLargeError
 from climbpath.posture.batch import StanceBatch, stance_batch
+from climbpath.posture.limits import TILT_LIMIT
 from climbpath.posture.linkage import Linkage
 from climbpath.posture.solver import solve_postures
+from climbpath.stance.extended import Allowed as Allowed
+from climbpath.stance.extended import smeared, struck, struck_alone
 from climbpath.stance.options import HALF_FOOT_BREADTH, ContactOptions, contact_points
 
 Array = NDArray[np.float64]
@@ -32,6 +38,9 @@ Relation = tuple[Flags, Ints, Ints]
 
 BLOCK = 1_000_000
 """Candidates formed at a time."""
+
+CLOSE = 1e-3
+"""A pair this near what would rule it out, m, is solved."""
 
 FEW_PAIRS = 30_000
 """With fewer pairs of contacts than this, no wall is too dense for any machine."""
@@ -61,18 +70,9 @@ class Found:
 
     def take(self, index: Ints | Flags) -> Found:
         """The chosen stances."""
-        return Found(
-            self.contacts[index], self.margin[index], self.turn[..., index], self.shift[:, index]
-        )
-
-
-@dataclass(frozen=True)
-class Allowed:
-    """Which stances may be used at all: conditions that leave stances out."""
-
-    avoid: frozenset[int] = frozenset()
-    matching: bool = True
-    smears: bool = True
+        chosen = np.flatnonzero(index) if index.dtype == bool else index
+        return Found(self.contacts[chosen], self.margin[chosen],
+                     self.turn.take(chosen, axis=-1), self.shift.take(chosen, axis=-1))
 
 
 def batch_of(options: ContactOptions, linkage: Linkage, contacts: Ints) -> StanceBatch:
@@ -99,15 +99,7 @@ def all_stances(
     ``missing`` [m]: also stances whose reach falls short by up to this (for why-not questions).
     TooLargeError when more than ``memory_bytes`` would be needed.
     """
-    search = _Search(options, linkage, allowed, missing, memory_bytes)
-    parts = search.on_holds()
-    base = Found.join(parts)
-    base = base.take(np.asarray((base.contacts >= 0).any(axis=1)))
-    if allowed.smears:
-        smeared = search.extended(base, _smeared(options, base.contacts))
-        base = Found.join([base, smeared])
-    struck = search.extended(base, _struck(options, linkage, base.contacts, allowed))
-    return Found.join([base, struck])
+    return _Search(options, linkage, allowed, missing, memory_bytes).everything()
 
 
 class _Search:
@@ -120,19 +112,20 @@ class _Search:
         # Matching moves a hand or foot by half its breadth, so a triple may be possible where a
         # pair on the unshared points just is not.
         self.extend_above = -missing - max(linkage.hand_breadth / 2, HALF_FOOT_BREADTH)
+        # What a stance worth extending may miss a limit by, m, and a little for rounding.
+        self.missed = CLOSE - self.extend_above
         self.memory_bytes = memory_bytes
         self.base = options.holds + 1  # one number more for the floor
         self.kept = 0
 
-    def on_holds(self) -> list[Found]:
-        """Stances on holds and the floor, from single contacts to all four limbs."""
+    def everything(self) -> Found:
+        """All possible stances, from single contacts to all four limbs."""
         choices = self._choices()
         both: list[Limbs] = list(combinations(Limb, 2))
         single: list[tuple[Limbs, Ints]] = [((limb,), choices[limb][:, None]) for limb in Limb]
         double = [(pair, self._near(choices, pair)) for pair in both]
         self._foresee(double)
-        found, possible = self._solved([*single, *double])
-        parts = [found]
+        first, possible, _ = self._solved([*single, *double])
         tables = [self._table(rows) for rows in possible[len(single):]]
         pairs: dict[Limbs, Relation] = dict(zip(both, tables, strict=True))
         three: list[Limbs] = list(combinations(Limb, 3))
@@ -143,8 +136,11 @@ class _Search:
                 grown.append((limbs, rows))
                 formed += len(rows)
                 self._guard(formed)
-        found, possible = self._solved(grown)
-        parts.append(found)
+        more = np.concatenate([smeared(first.contacts, self.allowed)[0],
+                               struck_alone(self.options, self.allowed),
+                               self._struck(first.contacts)[0]])
+        second, possible, extended = self._solved(grown, more)
+        parts = [first, second, extended]
         triples: dict[Limbs, Ints] = {}
         for limbs in three:
             rows = np.concatenate(
@@ -154,14 +150,33 @@ class _Search:
             triples[limbs] = rows[np.argsort(self._key(rows))]
         self._guard(self._expected(triples[Limb.LH, Limb.RH, Limb.LF], pairs[Limb.LF, Limb.RF],
                                    lambda rows: self._whole(rows, pairs, triples)))
-        parts += [self._solved([(tuple(Limb), rows)])[0] for rows in self._quads(pairs, triples)]
-        return parts
+        more, base = self._last(second, extended)
+        for rows in self._quads(pairs, triples):
+            whole, _, extended = self._solved([(tuple(Limb), rows)], more)
+            # A strike from a smear that was only tried along with it needs that smear.
+            parts += [whole, self._standing(extended, base)]
+            more = np.zeros((0, 4), np.int64)
+        if len(more):
+            parts.append(self._standing(self._solved([], more)[2], base))
+        return Found.join(parts)
 
-    def extended(self, base: Found, contacts: Ints) -> Found:
-        """Solve stances made from possible ones by one more contact; keep the possible."""
-        self._guard(len(contacts))
-        found = solve(self.options, self.linkage, contacts)
-        return found.take(found.margin >= self.keep_above)
+    def _last(self, triples: Found, extended: Found) -> tuple[Ints, Ints]:
+        """Smears and strikes from triples and smears, and keys of strikes that need a smear."""
+        feet, _ = smeared(triples.contacts, self.allowed)
+        smears = extended.contacts[(extended.contacts == SMEAR).any(axis=1)]
+        tried, source = self._struck(feet)
+        more = np.concatenate([feet, self._struck(triples.contacts)[0], self._struck(smears)[0],
+                               tried])
+        return more, np.stack([self._whole_key(tried), self._whole_key(feet[source])])
+
+    def _struck(self, contacts: Ints) -> tuple[Ints, Ints]:
+        return struck(self.options, self.linkage, contacts, self.allowed)
+
+    def _standing(self, found: Found, base: Ints) -> Found:
+        """Without the strikes whose smear, their key in ``base``, is not possible itself."""
+        keys = self._whole_key(found.contacts)
+        lost = base[0][~np.isin(base[1], keys)]
+        return found.take(~np.isin(keys, lost))
 
     def _choices(self) -> list[Ints]:
         """Hold numbers (and the floor's) each limb can touch."""
@@ -181,6 +196,7 @@ class _Search:
         limit = across + trunk
         for limb in both:
             limit += arm if limb <= Limb.RH else float(linkage.reach[limb])
+        limit = min(limit, self._longest(both))
         first, second = (choices[limb][choices[limb] < options.holds] for limb in both)
         rows = []
         if len(first) and len(second):
@@ -188,6 +204,8 @@ class _Search:
                 cKDTree(options.point[second]), limit + 1e-6, output_type="ndarray"
             )
             rows.append(np.stack([first[near["i"]], second[near["j"]]], axis=1))
+            if trunk:
+                rows[0] = rows[0][~self._upside_down(rows[0])]
         floor = options.holds
         upper = linkage.trunk + arm if both[0] <= Limb.RH else float(linkage.reach[2])
         tall = linkage.tiptoe_reach + upper
@@ -214,25 +232,66 @@ class _Search:
             result = result[~full]
         return result.astype(np.int64)
 
-    def _solved(self, groups: list[tuple[Limbs, Ints]]) -> tuple[Found, list[Ints]]:
-        """Solve partial stances of several sets of limbs in one go.
+    def _longest(self, both: Limbs) -> float:
+        """What two contacts may be apart at most, m, with reach missing as far as counts here."""
+        linkage = self.linkage
+        across = abs(float(linkage.roots[both[0], 0] - linkage.roots[both[1], 0]))
+        hands = sum(limb <= Limb.RH for limb in both)
+        rise = linkage.shoulder_rise
+        # Hand and foot: the shoulder rises along the trunk, away from the hip. Two hands: each may.
+        between = math.hypot(across, linkage.trunk + rise) if hands == 1 else across + hands * rise
+        reach = float(linkage.reach[both[0]] + linkage.reach[both[1]])
+        return reach + between + 2.0 * self.missed
 
-        Returns the possible stances, and for each group the rows worth extending.
+    def _upside_down(self, rows: Ints) -> Flags:
+        """Pairs of a hand's and a foot's hold that no trunk within its tilt can be between.
+
+        Along the trunk a hand stays above the hips and a foot below, and the trunk leans from the
+        upward direction of whichever section it belongs to by no more than its tilt.
+        """
+        options = self.options
+        apart = options.point[rows[:, 1]] - options.point[rows[:, 0]]
+        length = np.maximum(np.linalg.norm(apart, axis=1), 1e-9)
+        angle = np.arccos(np.clip(apart @ options.surface.up.T / length[:, None], -1.0, 1.0))
+        tilt = math.acos(max(TILT_LIMIT - self.missed / self.linkage.trunk, -1.0))
+        above = length[:, None] * np.cos(np.minimum(angle + tilt, math.pi))
+        return np.asarray((above > 2.0 * self.missed).all(axis=1))
+
+    def _solved(
+        self, groups: list[tuple[Limbs, Ints]], more: Ints | None = None
+    ) -> tuple[Found, list[Ints], Found]:
+        """Solve partial stances of several sets of limbs, and ``more`` stances, in one go.
+
+        Returns the possible stances with a hold, for each group the rows worth extending, and the
+        possible ones of ``more``.
         """
         total = sum(len(rows) for _, rows in groups)
-        self._guard(total)
+        whole = np.zeros((0, 4), np.int64) if more is None else more
+        self._guard(total + len(whole))
         contacts = np.full((total, 4), FREE, dtype=np.int64)
         begin = 0
         for limbs, rows in groups:
             numbers = np.where(rows == self.options.holds, FLOOR, rows)
             contacts[begin:begin + len(rows), list(limbs)] = numbers
             begin += len(rows)
+        contacts = np.concatenate([contacts, whole])
         found = solve(self.options, self.linkage, contacts)
-        kept = found.take(found.margin >= self.keep_above)
-        self.kept += len(kept.margin)
-        possible = np.split(found.margin >= self.extend_above,
-                            np.cumsum([len(rows) for _, rows in groups])[:-1])
-        return kept, [rows[good] for (_, rows), good in zip(groups, possible, strict=True)]
+        kept = found.margin >= self.keep_above
+        self.kept += int(np.count_nonzero(kept))
+        kept &= (contacts >= 0).any(axis=1)
+        possible = np.split(found.margin[:total] >= self.extend_above,
+                            np.cumsum([len(rows) for _, rows in groups])[:-1]) if groups else []
+        index = np.flatnonzero(kept)
+        return (found.take(index[index < total]),
+                [rows[good] for (_, rows), good in zip(groups, possible, strict=True)],
+                found.take(index[index >= total]))
+
+    def _whole_key(self, contacts: Ints) -> Ints:
+        """One number for each stance (N, 4)."""
+        key = np.zeros(len(contacts), dtype=np.int64)
+        for limb in Limb:
+            key = key * (self.base + 3) + contacts[:, limb] + 3
+        return key
 
     def _guard(self, more: int) -> None:
         needed = (self.kept + more) * BYTES_PER_STANCE
@@ -325,56 +384,12 @@ class _Search:
             rows = rows[pairs[limb, Limb.RF][0][rows[:, limb], rows[:, 3]]]
         for three in ((0, 1, 3), (0, 2, 3), (1, 2, 3)):
             known = self._key(triples[Limb(three[0]), Limb(three[1]), Limb(three[2])])
-            rows = rows[_member(known, self._key(rows[:, three]))]
+            rows = rows[_place(known, self._key(rows[:, three]))[1]]
         return rows
 
-
-def _member(known: Ints, wanted: Ints) -> Flags:
-    """Which of ``wanted`` are in the sorted ``known``."""
+def _place(known: Ints, wanted: Ints) -> tuple[Ints, Flags]:
+    """Where each of ``wanted`` stands in the sorted ``known``, and whether it does."""
     if not len(known):
-        return np.zeros(len(wanted), dtype=bool)
+        return np.zeros(len(wanted), dtype=np.int64), np.zeros(len(wanted), dtype=bool)
     place = np.minimum(np.searchsorted(known, wanted), len(known) - 1)
-    return np.asarray(known[place] == wanted)
-
-
-def _smeared(options: ContactOptions, contacts: Ints) -> Ints:
-    """Stances with one or both free feet smearing, where a hand has a hold."""
-    hand = np.asarray((contacts[:, :2] >= 0).any(axis=1))
-    free = (contacts[:, 2:] == FREE) & hand[:, None]
-    grown = []
-    for feet in ((Limb.LF,), (Limb.RF,), (Limb.LF, Limb.RF)):
-        both = np.asarray(free[:, [foot - 2 for foot in feet]].all(axis=1))
-        rows = contacts[both].copy()
-        rows[:, list(feet)] = SMEAR
-        grown.append(rows)
-    return np.concatenate(grown)
-
-
-def _struck(
-    options: ContactOptions, linkage: Linkage, contacts: Ints, allowed: Allowed
-) -> Ints:
-    """Stances with a free hand on a finish pad, and each hand there alone."""
-    grown = []
-    arm = float(linkage.reach[0]) + linkage.strike_extra + linkage.shoulder_rise
-    body = linkage.trunk + float(linkage.reach[2]) + arm + 0.4
-    for pad in np.flatnonzero(options.strike):
-        if int(pad) in allowed.avoid:
-            continue
-        outline = options.outlines.get(int(pad))
-        size = _radius(outline, options, int(pad)) if outline is not None else 0.0
-        gap = np.linalg.norm(options.point - options.point[pad], axis=1)
-        index = np.maximum(contacts, 0)
-        far = np.asarray(((contacts >= 0) & (gap[index] > body + size)).any(axis=1))
-        for hand in (Limb.LH, Limb.RH):
-            rows = contacts[(contacts[:, hand] == FREE) & ~far].copy()
-            rows[:, hand] = pad
-            alone = np.full((1, 4), FREE, dtype=np.int64)
-            alone[0, hand] = pad
-            grown += [rows, alone]
-    return np.concatenate(grown) if grown else np.zeros((0, 4), dtype=np.int64)
-
-
-def _radius(outline: object, options: ContactOptions, pad: int) -> float:
-    """Largest distance of an outline's corners from the pad's point of grip, m."""
-    corners = np.asarray(outline.exterior.coords)  # type: ignore[attr-defined]
-    return float(np.hypot(*(corners - options.place[pad, :2]).T).max())
+    return place, np.asarray(known[place] == wanted)

@@ -13,15 +13,18 @@ from numpy.typing import NDArray
 from climbpath.body import Athlete
 from climbpath.contacts import CONTACT_CODES, LIMB_NAMES, Limb
 from climbpath.errors import UsageError
-from climbpath.motion.model import Motion, PacedMotion
+from climbpath.motion.capacity import capacities_of
+from climbpath.motion.force import ForceMotion
+from climbpath.motion.model import Motion
 from climbpath.posture.linkage import Linkage, linkage_of
 from climbpath.posture.samples import Lattice
-from climbpath.route.build import SearchGraph, build_graph, off_line
+from climbpath.route.build import SearchGraph, build_graph
 from climbpath.route.demands import Demand, Opening, Touch
-from climbpath.route.nodes import LANDED, LASTS, READY
+from climbpath.route.measures import off_line
+from climbpath.route.nodes import READY
 from climbpath.stance.enumerate import Allowed
 from climbpath.stance.options import ContactOptions, contact_options
-from climbpath.stance.stances import stance_set
+from climbpath.stance.stances import StanceSet, stance_set
 from climbpath.study.sequence import Sequence, unknown_holds
 from climbpath.wall import Wall
 
@@ -134,6 +137,67 @@ def lattice_of(options: ContactOptions, wall: Wall, step: float) -> Lattice:
     return Lattice(min(heights, default=0.0), step)
 
 
+@dataclass(frozen=True)
+class Ground:
+    """What a wall and the lengths of a body give, before any capacity is looked at."""
+
+    wall: Wall
+    options: ContactOptions
+    linkage: Linkage
+    stances: StanceSet
+    memory_bytes: float
+
+
+def ground_of(
+    wall: Wall, athlete: Athlete, conditions: Conditions, step: float = LATTICE_STEP,
+    balanced: bool = True, missing: float = 0.0, memory_bytes: float | None = None,
+) -> Ground:
+    """All stances with their samples. ``missing`` [m] lets reaches fall short by so much.
+
+    UsageError for conditions the wall cannot have; TooLargeError where memory would not do.
+    """
+    check_conditions(wall, conditions)
+    options = contact_options(wall)
+    linkage = linkage_of(athlete)
+    allowed = Allowed(
+        frozenset(options.index(name) for name in conditions.avoid),
+        conditions.matching, conditions.smears,
+    )
+    memory = MEMORY_SHARE * available_memory() if memory_bytes is None else memory_bytes
+    lattice = lattice_of(options, wall, step)
+    stances = stance_set(options, linkage, allowed, wall.line_x, lattice, missing, memory,
+                         balanced)
+    return Ground(wall, options, linkage, stances, memory)
+
+
+def climb_on(
+    ground: Ground, athlete: Athlete, conditions: Conditions, motion: Motion,
+    progress: Progress | None = None,
+) -> Climb:
+    """The search over ``ground`` for an athlete of the same lengths."""
+    report = progress or (lambda _what, _share: None)
+    wall, options, linkage, stances = ground.wall, ground.options, ground.linkage, ground.stances
+    report("forces", 0.4)
+    strength = motion.strengths(wall, options, linkage, stances)
+    report("moves", 0.5)
+    search = build_graph(options, linkage, stances, motion, wall.line_x, strength,
+                         conditions.flights, ground.memory_bytes)
+    report("routes", 0.8)
+    sources, held = start_nodes(wall, options, search, conditions)
+    off = np.abs(off_line(stances.com[search.code.sample(sources), 0], wall.line_x))
+    reaction = np.full(len(sources), round(motion.reaction * 1e6))
+    return Climb(
+        wall, athlete, conditions, options, linkage, motion, search, sources, reaction,
+        np.rint(off * motion.reaction * 1e6).astype(np.int64), _targets(wall, options, search),
+        demands_of(options, conditions, search), held,
+    )
+
+
+def motion_of(athlete: Athlete) -> Motion:
+    """The model of forces with the athlete's capacities."""
+    return ForceMotion(capacities_of(athlete))
+
+
 def prepare(
     wall: Wall, athlete: Athlete, conditions: Conditions, motion: Motion | None = None,
     step: float = LATTICE_STEP, missing: float = 0.0, progress: Progress | None = None,
@@ -143,37 +207,18 @@ def prepare(
 
     UsageError for conditions the wall cannot have; TooLargeError where memory would not do.
     """
-    check_conditions(wall, conditions)
-    report = progress or (lambda _what, _share: None)
-    options = contact_options(wall)
-    linkage = linkage_of(athlete)
-    rule = motion or PacedMotion()
-    allowed = Allowed(
-        frozenset(options.index(name) for name in conditions.avoid),
-        conditions.matching, conditions.smears,
-    )
-    memory = MEMORY_SHARE * available_memory() if memory_bytes is None else memory_bytes
-    lattice = lattice_of(options, wall, step)
-    report("stances", 0.0)
-    stances = stance_set(options, linkage, allowed, wall.line_x, lattice, missing, memory)
-    report("moves", 0.5)
-    search = build_graph(options, linkage, stances, rule, wall.line_x, conditions.flights, memory)
-    report("routes", 0.8)
-    sources, held = _sources(wall, options, search, conditions)
-    off = np.abs(off_line(stances.com[search.code.sample(sources), 0], wall.line_x))
-    reaction = np.full(len(sources), round(rule.reaction * 1e6))
-    return Climb(
-        wall, athlete, conditions, options, linkage, rule, search, sources, reaction,
-        np.rint(off * rule.reaction * 1e6).astype(np.int64), _targets(wall, options, search),
-        demands_of(options, conditions, search), held,
-    )
+    rule = motion or motion_of(athlete)
+    if progress is not None:
+        progress("stances", 0.0)
+    ground = ground_of(wall, athlete, conditions, step, rule.balanced, missing, memory_bytes)
+    return climb_on(ground, athlete, conditions, rule, progress)
 
 
 def _codes(options: ContactOptions, names: tuple[str, ...]) -> list[int]:
     return [CONTACT_CODES[name] if name in CONTACT_CODES else options.index(name) for name in names]
 
 
-def _sources(
+def start_nodes(
     wall: Wall, options: ContactOptions, search: SearchGraph, conditions: Conditions
 ) -> tuple[Ints, tuple[tuple[int, ...], ...]]:
     """Ready nodes of all samples of the allowed start stances, and what each already touches."""
@@ -200,7 +245,7 @@ def _sources(
         tuple(int(search.code.event(limb, contact[limb:limb + 1])[0]) for limb in Limb)
         for contact in stances.contacts[stances.sample_stance[samples]]
     )
-    return search.code.node(samples, 0, READY), held
+    return search.code.node(samples, 0, 0, READY), held
 
 
 def _targets(wall: Wall, options: ContactOptions, search: SearchGraph) -> Ints:
@@ -209,9 +254,7 @@ def _targets(wall: Wall, options: ContactOptions, search: SearchGraph) -> Ints:
     finish = [options.index(name) for name in wall.finish]
     done = np.asarray(np.isin(stances.contacts[:, :2], finish).any(axis=1))
     samples = np.flatnonzero(done[stances.sample_stance])
-    return np.concatenate(
-        [search.code.node(samples, last, LANDED) for last in range(LASTS)]
-    ).astype(np.int64)
+    return search.code.all_landed(samples)
 
 
 def demands_of(

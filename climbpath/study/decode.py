@@ -12,8 +12,8 @@ from climbpath.motion.capacity import capacities_of
 from climbpath.motion.cones import hold_cones
 from climbpath.motion.rest import rest_loads
 from climbpath.posture.assembly import JOINTS, assemble
-from climbpath.route.build import off_line
-from climbpath.route.nodes import LANDED, PHASES
+from climbpath.route.measures import off_line
+from climbpath.route.nodes import LANDED
 from climbpath.route.shortest import Route
 from climbpath.stance.enumerate import batch_of
 from climbpath.study.climb import Climb
@@ -45,6 +45,8 @@ def legs_of(climb: Climb, route: Route, start_us: int) -> list[Leg]:
     clock = start_us
     legs: list[Leg] = []
     begin, begin_us, flight = nodes[0], clock, False
+    stances = climb.search.stances
+    owner = stances.sample_stance[code.sample(np.array(begin))]
     landed: set[int] = set()
     for tail, head, arc in zip(nodes[:-1], nodes[1:], route.arcs, strict=True):
         clock += int(graph.time_us[arc])
@@ -53,12 +55,16 @@ def legs_of(climb: Climb, route: Route, start_us: int) -> list[Leg]:
         if event >= 0:
             landed.add(code.landing(event)[0])
         plain = head < code.plain
-        settles = tail < code.plain and tail % PHASES == LANDED and head % PHASES != LANDED
-        if settles or (head == nodes[-1] and plain):
+        settles = tail < code.plain and plain
+        settles &= tail % code.phases >= LANDED and head % code.phases < LANDED
+        # A rise that nothing landed with is the first part of the move that follows.
+        moved = bool(landed) or stances.sample_stance[code.sample(np.array(head))] != owner
+        if (settles and moved) or (head == nodes[-1] and plain):
             end = tail if settles else head
             legs.append(Leg(int(code.sample(np.array(begin))), int(code.sample(np.array(end))),
                             begin_us, clock, flight, frozenset(landed)))
             begin, begin_us, flight = head, clock, False
+            owner = stances.sample_stance[code.sample(np.array(head))]
             landed.clear()
     return legs
 

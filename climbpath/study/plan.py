@@ -185,7 +185,7 @@ def plan(
         raise UsageError(f"alternatives: 1 to 20, found {asked.alternatives}")
     climb = prepare(wall, athlete, asked.conditions, motion, asked.step, progress=progress)
     routes = plan_routes(climb, asked)
-    recoster = Recoster(climb.options, climb.search, climb.motion, wall.line_x)
+    recoster = Recoster(climb.options, climb.linkage, climb.search, climb.motion, wall.line_x)
     for best in routes:
         recoster.check(best.route)
     plans = tuple(plan_of(climb, best.route, rank)

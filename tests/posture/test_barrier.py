@@ -2,15 +2,13 @@
 
 from __future__ import annotations
 
-from typing import Any
-
 import numpy as np
 import pytest
 from numpy.typing import NDArray
 
+from climbpath.posture import iterates
 from climbpath.posture import limits as lim
-from climbpath.posture import newton
-from climbpath.posture.barrier import SIZE, System
+from climbpath.posture.barrier import RIGHT, SIZE, System
 from climbpath.posture.batch import StanceBatch
 from climbpath.posture.linkage import Linkage
 from tests.posture.drawn import drawn, flat
@@ -90,26 +88,37 @@ def place(request: pytest.FixtureRequest) -> Place:
     level = np.hypot(away[0, 2:], away[2, 2:]).min(axis=0)
     clear = (kink > 0.01) & (geometry.distance.min(axis=0) > 0.1) & (level > 0.15)
     kept = np.flatnonzero(clear)
+    # Stances on the floor first, as the solver has them.
+    kept = kept[np.argsort(~batch.floor[:, kept].any(axis=0), kind="stable")]
     assert len(kept) > 50
     spare = rng.normal(0.0, 0.1, len(kept))
     return Place(stances.linkage, batch.take(kept), turn[..., kept], shift[:, kept], spare)
 
 
-def run_of(place: Place, **more: Array | NDArray[np.bool_]) -> newton._Run:
-    """The solver's iterates at a place; what a test does not give is not looked at."""
-    fields: dict[str, Any] = dict.fromkeys(newton._Run.__dataclass_fields__, np.zeros(0))
-    fields["aim"] = None
-    fields |= {"batch": place.batch, "turn": place.turn, "shift": place.shift,
-               "spare": place.spare, **more}
-    return newton._Run(**fields)
+def run_of(place: Place) -> iterates.Run:
+    """The solver's iterates at a place."""
+    layout = lim.point_layout(place.batch)
+    run, _ = iterates.started(place.linkage, place.batch, place.turn, place.shift, layout, None)
+    run.spare = place.spare
+    return run
 
 
-def state_of(place: Place) -> newton._State:
-    return newton._evaluate(place.linkage, run_of(place), lim.point_layout(place.batch))
+def state_of(place: Place) -> iterates.State:
+    return iterates.evaluate(place.linkage, run_of(place), lim.point_layout(place.batch))
+
+
+def joined(blocks: list[Array], count: int) -> Array:
+    """All blocks as one (M, N), with 0 where a block does not reach."""
+    return np.concatenate([np.pad(block, ((0, 0), (0, count - block.shape[1])))
+                           for block in blocks])
 
 
 def test_limits_have_one_definition(place: Place) -> None:
-    assert np.asarray(state_of(place).value) == pytest.approx(place.values(np.zeros(7)), abs=1e-12)
+    # What a stance does not have is not evaluated, so it is left out.
+    count = place.batch.size
+    had = joined([block.active for block in run_of(place).blocks], count)
+    expected = had * place.values(np.zeros(7))
+    assert had * joined(state_of(place).value, count) == pytest.approx(expected, abs=1e-12)
 
 
 def test_linear_change_is_the_slope(place: Place) -> None:
@@ -119,7 +128,10 @@ def test_linear_change_is_the_slope(place: Place) -> None:
         step[k] = SMALL
         slope = (place.values(step) - place.values(-step)) / (2.0 * SMALL)
         unit = np.repeat(np.eye(SIZE)[:, k, None], place.batch.size, axis=1)
-        assert newton._linear_change(run_of(place), state, unit) == pytest.approx(slope, abs=1e-5)
+        run, count = run_of(place), place.batch.size
+        had = joined([block.active for block in run.blocks], count)
+        found = joined(iterates.linear_change(run, state, unit), count)
+        assert had * found == pytest.approx(had * slope, abs=1e-5)
 
 
 def second(place: Place) -> Array:
@@ -140,50 +152,45 @@ def second(place: Place) -> Array:
     return result
 
 
-def test_newton_system_is_slopes_and_curvatures(
-    place: Place, monkeypatch: pytest.MonkeyPatch
-) -> None:
+def test_newton_system_is_slopes_and_curvatures(place: Place) -> None:
     """The matrix is sum of m/s g' g'^T - m g'', the right-hand side sum of r g' plus that of t."""
     state = state_of(place)
     values = place.values(np.zeros(SIZE))
-    active = newton._active(place.batch, lim.point_layout(place.batch), state.points)
+    run, count = run_of(place), place.batch.size
+    active = joined([block.active for block in run.blocks], count) > 0.0
     rng = np.random.default_rng(4)
     slacks = np.where(active, rng.uniform(0.02, 0.5, values.shape), 1.0)
     multipliers = np.where(active, rng.uniform(0.0, 0.5, values.shape), 0.0)
-    target = np.full(place.batch.size, 0.01)
-    seen: list[System] = []
-    original = System.solve
-
-    def solve(self: System) -> list[Array]:
-        seen.append(System.__new__(System))
-        seen[-1].matrix = [[entry.copy() for entry in row] for row in self.matrix]
-        seen[-1].right = [entry.copy() for entry in self.right]
-        return original(self)
-
-    monkeypatch.setattr(System, "solve", solve)
-    run = run_of(place, target=target, active=active, slacks=slacks, multipliers=multipliers)
-    newton._newton(run, state)
-    system = seen[0]
-    units = [np.repeat(np.eye(SIZE)[:, k, None], place.batch.size, axis=1) for k in range(SIZE)]
-    slope = np.stack([newton._linear_change(run_of(place), state, unit) for unit in units])
+    target = np.full(count, 0.01)
+    run.weight, begin = target, 0
+    for block in run.blocks:
+        rows, size = block.active.shape
+        block.slacks = slacks[begin:begin + rows, :size]
+        block.multipliers = multipliers[begin:begin + rows, :size]
+        begin += rows
+    inverse = [block.active / block.slacks for block in run.blocks]
+    system = iterates.system_of(run, state, inverse, [0.01 * own for own in inverse])
+    system.close()
+    units = [np.repeat(np.eye(SIZE)[:, k, None], count, axis=1) for k in range(SIZE)]
+    slope = np.stack([joined(iterates.linear_change(run, state, unit), count) for unit in units])
     curve = second(place)
     weight = multipliers / slacks
     right = np.where(active, multipliers + target / slacks - weight * values, 0.0)
     matrix = np.einsum("mn,imn,jmn->ijn", weight, slope, slope)
     matrix -= np.einsum("mn,ijmn->ijn", multipliers, curve)
-    damping = [newton.DAMPING[k] + newton.DAMPING_PER_TARGET[k] * target for k in (0, 1)]
+    damping = [iterates.DAMPING[k] + iterates.DAMPING_PER_TARGET[k] * target for k in (0, 1)]
     for k in range(3):
         matrix[k, k] += damping[0]
         matrix[3 + k, 3 + k] += damping[1]
     aim = np.einsum("mn,imn->in", right, slope)
     aim[6] += 1.0
-    assert np.stack(system.right) == pytest.approx(aim, abs=1e-5)
+    assert system.lower[RIGHT] == pytest.approx(aim, abs=1e-5)
     # The lift limit's curvature leaves out the rounding of the level distance near zero, a share
     # (SOFT / level)^2, at most 0.5 % here, of one term.
     for i in range(SIZE):
         for j in range(i + 1):
             scale = 1.0 + np.abs(matrix[i, j])
-            assert np.abs(system.matrix[i][j] - matrix[i, j]).max() < 1e-3 * scale.max(), (i, j)
+            assert np.abs(system.lower[i, j] - matrix[i, j]).max() < 1e-3 * scale.max(), (i, j)
 
 
 def test_solve_is_that_of_linear_algebra() -> None:
@@ -193,10 +200,11 @@ def test_solve_is_that_of_linear_algebra() -> None:
     matrix = root @ root.transpose(0, 2, 1) + np.eye(SIZE)
     right = rng.normal(size=(count, SIZE))
     system = System(count, (np.zeros(count), np.zeros(count)))
-    system.matrix = [[matrix[:, i, j].copy() for j in range(i + 1)] for i in range(SIZE)]
-    system.right = [right[:, i].copy() for i in range(SIZE)]
+    system.lower[:RIGHT] = np.moveaxis(matrix, 0, 2)
+    system.lower[RIGHT] = right.T
     expected = np.linalg.solve(matrix, right[..., None])[..., 0]
-    assert np.stack(system.solve(), axis=1) == pytest.approx(expected, abs=1e-9)
+    step = system.solve().T
+    assert step == pytest.approx(expected, abs=1e-9)
 
 
 def test_solve_descends_where_the_matrix_is_not_positive() -> None:
@@ -206,7 +214,7 @@ def test_solve_descends_where_the_matrix_is_not_positive() -> None:
     matrix = root + root.transpose(0, 2, 1)
     right = rng.normal(size=(count, SIZE))
     system = System(count, (np.zeros(count), np.zeros(count)))
-    system.matrix = [[matrix[:, i, j].copy() for j in range(i + 1)] for i in range(SIZE)]
-    system.right = [right[:, i].copy() for i in range(SIZE)]
-    step = np.stack(system.solve(), axis=1)
+    system.lower[:RIGHT] = np.moveaxis(matrix, 0, 2)
+    system.lower[RIGHT] = right.T
+    step = system.solve().T
     assert ((step * right).sum(axis=1) > 0.0).all()

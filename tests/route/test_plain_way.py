@@ -10,6 +10,7 @@ import math
 
 import pytest
 
+from climbpath.motion.model import PacedMotion
 from climbpath.study.climb import Conditions, prepare
 from climbpath.study.plan import PlanRequest, best_route
 from climbpath.wall.model import Hold, Section, Start, Wall
@@ -39,7 +40,7 @@ known: dict[tuple[Wall, bool], tuple[dict[Contacts, float], dict[Contacts, dict[
 def both_ways(wall: Wall, conditions: Conditions) -> tuple[int, int | None, PlainWay]:
     """Least times [us] of the program and of the plain way."""
     body = athlete()
-    climb = prepare(wall, body, conditions)
+    climb = prepare(wall, body, conditions, PacedMotion())
     best = best_route(climb, PlanRequest(conditions=conditions))
     assert best is not None
     plain = PlainWay(wall, body, conditions.smears, conditions.flights)
