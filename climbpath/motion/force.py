@@ -28,7 +28,7 @@ forces themselves. References: Pham & Pham 2018, arXiv 1707.07239 (pacing under 
 from __future__ import annotations
 
 import math
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 
 import numpy as np
 from numpy.typing import NDArray
@@ -49,8 +49,15 @@ SPEED_LEVELS = 8
 """Levels of upward speed: those of bodies that could still rise by 0, 1, 2, … steps of this height,
 m. So a body that flies loses as many levels as it rises steps, and nothing by rounding."""
 
-SPEEDS = tuple(math.sqrt(2.0 * GRAVITY * SPEED_STEP * k) for k in range(SPEED_LEVELS))
-"""[m/s], up to 3.7: a little more than the mean of the fastest runs, 3.2 m/s."""
+
+
+def speed_levels(number: int, step: float) -> tuple[float, ...]:
+    """Speeds [m/s] that rises of 0, 1, 2, … times ``step`` [m] use up, √(2 g k step)."""
+    return tuple(math.sqrt(2.0 * GRAVITY * step * k) for k in range(number))
+
+
+SPEEDS = speed_levels(SPEED_LEVELS, SPEED_STEP)
+"""Up to 3.7 m/s: a little more than the mean of the fastest runs, 3.2 m/s."""
 
 SIDE_SHARE = 0.3
 """Share of the strength that a sideways shift may use (a choice of the model)."""
@@ -66,7 +73,10 @@ LONGEST = 1e3
 
 @dataclass(frozen=True)
 class ForceMotion:
-    """Motion from contact forces, of one athlete's capacities; times in s."""
+    """Motion from contact forces, of one athlete's capacities; times in s.
+
+    ``stronger`` multiplies every strength, to ask what more of it would do.
+    """
 
     capacities: Capacities
     least_step: float = 0.14
@@ -78,7 +88,9 @@ class ForceMotion:
     side_speed: float = 3.0
     longer: tuple[float, ...] = (0.25, 0.40)
     speeds: tuple[float, ...] = SPEEDS
+    stronger: float = 1.0
     hand_apart: float | None = 0.25
+    pair: float = 0.10
     in_place: bool = True
     balanced: bool = True
     hand_holds: bool = False
@@ -97,7 +109,12 @@ class ForceMotion:
         self, wall: Wall, options: ContactOptions, linkage: Linkage, stances: StanceSet
     ) -> Array:
         """Greatest upward force of every sample's contacts, (P,) [body weights]."""
-        return sample_strengths(wall, options, linkage, self.capacities, stances)
+        return self.stronger * sample_strengths(wall, options, linkage, self.capacities, stances)
+
+    def finer(self) -> ForceMotion:
+        """With a speed level between each two."""
+        return replace(self, speeds=speed_levels(2 * len(self.speeds) - 1,
+                                                 self.speeds[1]**2 / (4.0 * GRAVITY)))
 
     def _upward(self, change: Array, drive: Drive) -> tuple[Array, Array, Array, Flags]:
         """Rise, mean strength left for it, least time of the shift sideways and out, and whether

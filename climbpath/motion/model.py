@@ -82,6 +82,11 @@ class Motion(Protocol):
         ...
 
     @property
+    def pair(self) -> float:
+        """What a hand needs longer that lands on the hold of the other hand."""
+        ...
+
+    @property
     def in_place(self) -> bool:
         """Whether the centre of mass may rise while no limb lands, and limbs go on travelling from
         one move to the next."""
@@ -95,6 +100,10 @@ class Motion(Protocol):
     @property
     def hand_holds(self) -> bool:
         """Whether a hand must have a hold whenever a limb lands, for want of forces to tell."""
+        ...
+
+    def finer(self) -> Motion:
+        """The same with speed levels half as far apart, all of its own among them."""
         ...
 
     def strengths(
@@ -178,6 +187,7 @@ class PacedMotion:
     take_off_speed: float = 2.0
     speeds: tuple[float, ...] = (0.0,)
     hand_apart: float | None = None
+    pair: float = 0.0
     in_place: bool = False
     balanced: bool = False
     hand_holds: bool = True
@@ -186,6 +196,10 @@ class PacedMotion:
     def durations(self) -> tuple[float, ...]:
         """One class: every move lasts the least step or longer."""
         return (self.least_step,)
+
+    def finer(self) -> PacedMotion:
+        """It has one speed level only."""
+        return self
 
     def strengths(
         self, wall: Wall, options: ContactOptions, linkage: Linkage, stances: StanceSet

@@ -96,7 +96,7 @@ def descend(
     certain = np.zeros(batch.size, dtype=bool)
     run, state = started(linkage, batch, turn, shift, layout, aim)
     going = np.ones(batch.size, dtype=bool)
-    for iteration in range(1, steps + 1):
+    for _ in range(steps):
         _step(run, state)
         left = int(np.count_nonzero(going))
         if left < (1.0 - DROP_SHARE) * len(going):
@@ -108,25 +108,31 @@ def descend(
             # On the line many postures are equally good: stop at the first, before rounding picks.
             done |= run.aim.miss(run.turn, run.shift) < ON_LINE
         # What is done is taken down at once, so that no result depends on the others in the arrays.
-        asked = np.flatnonzero(going & done)
-        fresh = asked[_kept(run, state, asked)]
-        held = (run.blocks[0].multipliers[NOT_CONVEX[:, None], fresh] > HELD_ABOVE).any(axis=0)
-        certain[run.index[fresh]] = ~held
-        if iteration == steps:
-            fresh = np.flatnonzero(going)
-        where = run.index[fresh]
-        end.turn[..., where], end.shift[:, where] = run.turn[..., fresh], run.shift[:, fresh]
-        going[fresh] = False
-        if not going.any():
-            break
+        asked = np.flatnonzero(done & going)
+        if len(asked):
+            fresh = asked[_kept(run, state, asked)]
+            held = run.blocks[0].multipliers[NOT_CONVEX[:, None], fresh] > HELD_ABOVE
+            certain[run.index[fresh]] = ~held.any(axis=0)
+            _take_down(end, run, fresh)
+            going[fresh] = False
+            if not going.any():
+                break
         # A limit that holds takes its own value as slack, so that only limits still missed
         # are approached from outside.
         for block, value in zip(run.blocks, state.value, strict=True):
             least = 0.1 * block.slacks
             np.copyto(block.slacks, np.maximum(value, least, out=least), where=value > 0.0)
+    _take_down(end, run, np.flatnonzero(going))
     reached, hard = slack(linkage, batch, end.turn, end.shift)
     margin = np.where(hard >= -HARD_TOLERANCE, reached, np.minimum(reached, hard))
     return Postures(margin, end.turn, end.shift), certain
+
+
+def _take_down(end: Postures, run: Run, index: Ints) -> None:
+    """Where the chosen iterates stand is where they end."""
+    where = run.index[index]
+    end.turn[..., where] = run.turn.take(index, axis=-1)
+    end.shift[:, where] = run.shift.take(index, axis=-1)
 
 
 def _kept(run: Run, state: State, index: Ints) -> NDArray[np.bool_]:

@@ -29,7 +29,7 @@ from climbpath.posture.placing import ComGuess, com_guess, placed
 Array = NDArray[np.float64]
 Ints = NDArray[np.int64]
 
-CHUNK = 4096
+CHUNK = 2048
 LEAN = 0.45
 """Sideways lean of the trunk tried besides upright and the solver's own, rad."""
 

@@ -20,8 +20,8 @@ from climbpath.posture.newton import Postures, descend
 Array = NDArray[np.float64]
 Ints = NDArray[np.int64]
 
-CHUNK = 4096
-"""Stances solved together: arrays of this length stay in the processor's cache."""
+CHUNK = 8192
+"""Stances solved together: fewer would make too many calls, more would only take memory."""
 
 TIE = 1e-6
 """A later start replaces an earlier one only where it gains more than this, m: which of equally

@@ -99,6 +99,8 @@ class Builder:
         self.lands = (self.hands > 0) | (not motion.hand_holds)
         self.distance = reach_distances(options, linkage, stances)
         self.across = across_reach(linkage, stances)
+        left, right = stances.contacts[:, Limb.LH], stances.contacts[:, Limb.RH]
+        self.paired = (left >= 0) & (left == right)
         self.span = int(stances.level.max() - stances.level.min()) + 1 if stances.samples else 1
         self.lowest = int(stances.level.min()) if stances.samples else 0
         self.key = stances.sample_stance * self.span + (stances.level - self.lowest)
@@ -245,6 +247,7 @@ class Builder:
         time = self.motion.reach(self.distance[sample, limb], hand, quality, struck)
         if limb <= Limb.RH:
             time += self.motion.across(self.across[sample, limb])
+            time += np.where(self.paired[self.stances.sample_stance[sample]], self.motion.pair, 0.0)
         return time
 
     def event(self, limb: int, sample: Ints) -> Ints:

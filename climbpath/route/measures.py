@@ -8,6 +8,7 @@ from numpy.typing import NDArray
 from climbpath.contacts import Limb
 from climbpath.motion.model import Motion
 from climbpath.posture.assembly import rest_points
+from climbpath.posture.limits import limb_geometry
 from climbpath.posture.linkage import Linkage
 from climbpath.posture.newton import ON_LINE
 from climbpath.stance.enumerate import batch_of
@@ -72,4 +73,21 @@ def reach_distances(options: ContactOptions, linkage: Linkage, stances: StanceSe
             rest = shift + np.einsum("ijn,j->in", turn, rest_points(linkage, limb))
             gap = np.sqrt(((batch.target[:, limb] - rest) ** 2).sum(axis=0))
             result[part, limb] = np.where(batch.engaged[limb], gap, 0.0)
+    return result
+
+
+def hand_spare(options: ContactOptions, linkage: Linkage, stances: StanceSet) -> Array:
+    """Reach that each hand has to spare where it holds, (P, 2) [m]; infinite for one that is free,
+    and for a strike, which needs no hold.
+    """
+    owner = stances.sample_stance
+    result = np.full((stances.samples, 2), np.inf)
+    for begin in range(0, stances.samples, PART):
+        part = slice(begin, begin + PART)
+        contacts = stances.contacts[owner[part]]
+        batch = batch_of(options, linkage, contacts)
+        turn, shift = stances.turn[..., part], stances.shift[:, part]
+        spare = (batch.reach - limb_geometry(linkage, batch, turn, shift).distance)[:2].T
+        held = (contacts[:, :2] >= 0) & ~options.strike[np.maximum(contacts[:, :2], 0)]
+        result[part] = np.where(held, np.maximum(spare, 0.0), np.inf)
     return result

@@ -136,6 +136,8 @@ class Recoster:
                                  np.array([struck]))
         if hand:
             time = time + self.motion.across(self.across[[self._sample(head)], limb])
+            left, right = self._contacts(head)[:2]
+            time = time + (self.motion.pair if left == right else 0.0)
         return float(time[0])
 
     def _move(self, tail: int, head: int) -> tuple[int, int]:

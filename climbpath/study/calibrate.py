@@ -7,7 +7,6 @@ of how long it takes by the defaults. Errors are reported for the splits themsel
 
 from __future__ import annotations
 
-import importlib
 from collections.abc import Callable
 from collections.abc import Sequence as Several
 from dataclasses import dataclass, replace
@@ -30,6 +29,7 @@ from climbpath.study.fitting import (
     fit,
     what_cannot_be_told,
 )
+from climbpath.study.follow import Follower
 from climbpath.study.prediction_errors import Errors, errors_of, root_mean_square
 from climbpath.study.sequence import Sequence, unknown_holds
 from climbpath.study.splits import RunTimes, Split, has_slip, later_first, splits_of
@@ -164,10 +164,7 @@ class _Run:
 
 def follower(wall: Wall, athlete: Athlete, runs: Several[Sequence]) -> RunTimes:
     """The model that follows the placements of runs."""
-    # Found when it is needed: it is the slow part, and a test may put another in its place.
-    made: RunTimes = importlib.import_module("climbpath.study.follow").Follower(
-        wall, athlete, runs)
-    return made
+    return Follower(wall, athlete, runs)
 
 
 def calibrate(

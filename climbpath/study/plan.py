@@ -16,11 +16,19 @@ from climbpath.route.alternatives import alternatives
 from climbpath.route.bottleneck import bottleneck_route
 from climbpath.route.demands import with_demands
 from climbpath.route.graph import RouteGraph
+from climbpath.route.misses import Misses, misses_of
 from climbpath.route.recost import Recoster
 from climbpath.route.shortest import Route, Sources, shortest_route
 from climbpath.route.weights import line_weight_steps, supported_trade_offs, weighted
 from climbpath.study.cautions import FALSE_START_CAUTION, cautions_for
-from climbpath.study.climb import LATTICE_STEP, Climb, Conditions, Progress, prepare
+from climbpath.study.climb import (
+    LATTICE_STEP,
+    Climb,
+    Conditions,
+    Progress,
+    motion_of,
+    prepare,
+)
 from climbpath.study.decode import plan_of
 from climbpath.study.results import Plan, PlanResult
 from climbpath.study.why_not import why_not
@@ -43,10 +51,9 @@ LEAST_GAIN = 1.0
 """Least lateral area, mm s, that a slower trade-off must save to be listed."""
 
 
-PACING_CAUTION = (
-    "Times follow a simple pacing rule and look at no force. Loads are those of holding each "
-    "position still: above 1, or where none is given, a position cannot be held but only passed "
-    "through, if at all."
+LOAD_CAUTION = (
+    "Loads are those of holding each position still: above 1, or where none is given, a position "
+    "cannot be held but only passed through with the speed brought along."
 )
 
 FALSE_START = 0.100
@@ -188,7 +195,8 @@ def plan(
     recoster = Recoster(climb.options, climb.linkage, climb.search, climb.motion, wall.line_x)
     for best in routes:
         recoster.check(best.route)
-    plans = tuple(plan_of(climb, best.route, rank)
+    misses = misses_of(climb.options, climb.linkage, climb.search, climb.motion)
+    plans = tuple(with_misses(plan_of(climb, best.route, rank), best.route, misses)
                   for rank, best in enumerate(routes, start=1))
     trade_off: tuple[tuple[float, float, float], ...] = ()
     if plans and asked.trade_off:
@@ -202,11 +210,18 @@ def plan(
              *athlete.cautions]
     if any(p.pad_off_s is not None and p.pad_off_s < FALSE_START for p in plans):
         notes.append(FALSE_START_CAUTION)
-    notes.append(PACING_CAUTION)
+    notes.append(LOAD_CAUTION)
     return PlanResult(
         wall_name=wall.name, athlete_name=athlete.name, line_x_mm=wall.line_x * 1e3, aim=asked.aim,
         cautions=cautions_for(*notes), plans=plans, trade_off=trade_off, why_not=why,
     )
+
+
+def with_misses(plan: Plan, route: Route, misses: Misses) -> Plan:
+    """The plan with what missing a hold costs on average, and the chance that none is missed."""
+    lost = float(misses.cost_us[route.arcs].sum()) / 1e6
+    clean = float(np.prod(1.0 - misses.chance[route.arcs]))
+    return replace(plan, expected_time_s=plan.time_s + lost, chance_clean=clean)
 
 
 def trade_off_points(
@@ -237,9 +252,12 @@ def _with_lattice_error(
     wall: Wall, athlete: Athlete, request: PlanRequest, motion: Motion | None,
     plans: tuple[Plan, ...],
 ) -> tuple[Plan, ...]:
-    """State the step error: how much the aim's best time changes on a lattice of half the step."""
+    """State the step error: how much the aim's best time changes with half the step and with speed
+    levels half as far apart.
+    """
     finer = replace(request, step=request.step / 2.0, alternatives=1)
-    climb = prepare(wall, athlete, finer.conditions, motion, finer.step)
+    rule = (motion or motion_of(athlete)).finer()
+    climb = prepare(wall, athlete, finer.conditions, rule, finer.step)
     best = best_route(climb, finer)
     if best is None:
         return plans

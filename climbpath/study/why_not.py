@@ -14,18 +14,17 @@ from numpy.typing import NDArray
 from climbpath.body import Athlete
 from climbpath.contacts import FLOOR, FREE, LIMB_NAMES, Limb
 from climbpath.errors import TooLargeError
-from climbpath.motion.model import Motion
+from climbpath.motion.model import Motion, PacedMotion
 from climbpath.posture.batch import stance_batch
 from climbpath.posture.solver import solve_postures
-from climbpath.route.bottleneck import bottleneck_route
-from climbpath.route.demands import with_demands
 from climbpath.route.graph import reachable
-from climbpath.route.shortest import Route, Sources
 from climbpath.stance.enumerate import batch_of, solve
 from climbpath.stance.options import contact_points
 from climbpath.study.climb import Climb, Conditions, prepare
 from climbpath.study.decode import legs_of
+from climbpath.study.opening import way_under
 from climbpath.study.results import WhyNot
+from climbpath.study.why_strength import by_strength
 from climbpath.wall import Wall
 
 Array = NDArray[np.float64]
@@ -66,15 +65,20 @@ def why_not(
     stopped = _by_condition(wall, athlete, conditions, motion, step)
     if stopped is not None:
         return WhyNot(0, None, None, None, None, stopped)
+    lacking = by_strength(wall, athlete, conditions, motion, step)
+    if lacking is not None:
+        return lacking
+    # Reach alone stands in the way, so the rule that looks at no force will do.
+    paced = motion if isinstance(motion, PacedMotion) else PacedMotion()
     for missing in LOOSENED:
         try:
-            climb = prepare(wall, athlete, conditions, motion, step, missing)
+            climb = prepare(wall, athlete, conditions, paced, step, missing)
         except TooLargeError:
             break
         found = _least_shortfall(climb)
         if found is not None:
             return _explained(climb, found)
-    return _gap(prepare(wall, athlete, conditions, motion, step))
+    return _gap(prepare(wall, athlete, conditions, paced, step))
 
 
 def _gap(climb: Climb) -> WhyNot:
@@ -137,22 +141,7 @@ def _opens(
 ) -> bool:
     """Whether there is a way under these conditions."""
     climb = prepare(wall, athlete, conditions, motion, step)
-    return _route_under(climb, np.zeros(climb.search.graph.nodes)) is not None
-
-
-def _route_under(climb: Climb, value: Array) -> Route | None:
-    """The route whose greatest node value is least, then quickest, in the graph's own numbers."""
-    if not len(climb.sources) or not len(climb.targets):
-        return None
-    sources = Sources.at(climb.sources, climb.source_time)
-    demanded = with_demands(climb.search.graph, climb.demands, sources, climb.targets,
-                            climb.start_events)
-    if not len(demanded.sources.nodes) or not len(demanded.targets):
-        return None
-    inner = value if demanded.graph is climb.search.graph else value[demanded.base_node]
-    found = bottleneck_route(demanded.graph, inner, demanded.graph.time_us, demanded.sources,
-                             demanded.targets)
-    return None if found is None else demanded.base_route(found.route)
+    return way_under(climb) is not None
 
 
 def _least_shortfall(climb: Climb) -> Shortfall | None:
@@ -161,7 +150,7 @@ def _least_shortfall(climb: Climb) -> Shortfall | None:
     missing = np.maximum(-stances.margin, 0.0)
     value = np.zeros(climb.search.graph.nodes)
     value[:code.plain] = np.repeat(missing[stances.sample_stance], code.plain // stances.samples)
-    route = _route_under(climb, value)
+    route = way_under(climb, value)
     if route is None:
         return None
     legs = legs_of(climb, route, 0)

@@ -4,16 +4,16 @@ from __future__ import annotations
 
 from dataclasses import replace
 from functools import cache
-from itertools import product
+from itertools import combinations, product
 
 import numpy as np
 import pytest
 from numpy.typing import NDArray
 
-from climbpath.contacts import FLOOR, FREE, SMEAR
+from climbpath.contacts import FLOOR, FREE, SMEAR, Limb
 from climbpath.errors import TooLargeError
 from climbpath.posture.samples import Lattice
-from climbpath.stance.enumerate import Allowed, Found, all_stances, solve
+from climbpath.stance.enumerate import Allowed, Found, _Search, all_stances, solve
 from climbpath.stance.options import ContactOptions, contact_options, contact_points
 from climbpath.stance.stances import StanceSet, stance_keys, stance_set
 from climbpath.wall import Hold, Section, Wall
@@ -114,6 +114,31 @@ def test_nothing_is_missed_that_trying_everything_finds() -> None:
         missed |= {(seed, *key): m for key, m in possible.items() if key not in mine}
     print(f"\n{len(missed)} of {number} missed: {missed}")
     assert missed == {}
+
+
+@pytest.mark.parametrize("sections", [(5.0,), (-5.0, 30.0)])
+@pytest.mark.parametrize("limbs", list(combinations(Limb, 2)))
+def test_pairs_ruled_out_without_solving_are_none_that_count(
+    sections: tuple[float, ...], limbs: tuple[Limb, Limb]
+) -> None:
+    """Holds all over a wall: what the search leaves out misses more than it would extend."""
+    rng = np.random.default_rng(8)
+    holds = tuple(Hold(f"h{k}", round(rng.uniform(0.0, 3.0), 3), round(rng.uniform(0.3, 5.0), 3))
+                  for k in range(30))
+    parts = tuple(Section(5.5 / len(sections), float(np.deg2rad(deg))) for deg in sections)
+    options = contact_options(Wall("wide", 3.0, 1.5, 0.0, parts, holds, (), ()))
+    search = _Search(options, LINKAGES[0], Allowed(), 0.0, np.inf)
+    kept = search._near(search._choices(), limbs)
+    left_out = np.ones((options.holds + 1, options.holds + 1), dtype=bool)
+    left_out[kept[:, 0], kept[:, 1]] = False
+    rows = np.argwhere(left_out[:-1, :-1])
+    assert len(rows) > 100
+    contacts = np.full((len(rows), 4), FREE, dtype=np.int64)
+    contacts[:, list(limbs)] = rows
+    # Matching may still move a hand or foot of a pair, unless both of a kind have their hold.
+    both = (limbs[0] <= Limb.RH) == (limbs[1] <= Limb.RH)
+    least = search.keep_above if both else search.extend_above
+    assert solve(options, LINKAGES[0], contacts).margin.max() < least
 
 
 def test_smears_only_add() -> None:
