@@ -9,10 +9,11 @@ from __future__ import annotations
 import math
 from collections.abc import Mapping
 from dataclasses import replace
+from itertools import pairwise
 
 from climbpath.contacts import LIMB_NAMES
 from climbpath.study.cautions import cautions_for
-from climbpath.study.results import Plan, PlanResult, PlanStep, Point2, WhyNot
+from climbpath.study.results import PathPoint, Plan, PlanResult, PlanStep, Point2, WhyNot
 from climbpath.wall.model import Hold, Section, Start, Wall
 
 WIDTH, HEIGHT, LINE_X, FLOOR_Y = 3.0, 15.0, 1.5, -0.2
@@ -100,7 +101,18 @@ def sample_plan(wall: Wall | None = None, rank: int = 1) -> Plan:
         margin_min_mm=12.5,
         load_max=0.93,
         steps=steps,
+        com_path_mm=sample_path(steps),
     )
+
+
+def sample_path(steps: tuple[PlanStep, ...]) -> tuple[PathPoint, ...]:
+    """The steps with a point between each two, a little to the right of the middle."""
+    points: list[PathPoint] = [(steps[0].time_s, *steps[0].com_mm)]
+    for before, after in pairwise(steps):
+        x, y, z = ((a + b) / 2 for a, b in zip(before.com_mm, after.com_mm, strict=True))
+        points.append(((before.time_s + after.time_s) / 2, x + 5.0, y, z))
+        points.append((after.time_s, *after.com_mm))
+    return tuple(points)
 
 
 def sample_result(wall: Wall | None = None, athlete_name: str = "A. Sample") -> PlanResult:

@@ -72,6 +72,7 @@ PLAN: dict[str, Any] = strict(
         "margin_min_mm": MAYBE_NUMBER,
         "load_max": MAYBE_SHARE,
         "steps": {**listed(STEP), "minItems": 1},
+        "com_path_mm": {**listed(listed(NUMBER, 4)), "minItems": 1},
     }
 )
 

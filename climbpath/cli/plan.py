@@ -58,6 +58,7 @@ BODY_KEYS = ("athlete_file", "sex", "stature_mm", "mass_kg", "span_mm", "sitting
 @click.option("--no-smears", is_flag=True, help="No feet on the bare surface.")
 @click.option("--lane", metavar="ID", help="The lane to climb, on a wall that has lanes.")
 @click.option("--refine", is_flag=True, help="Solve again more finely and state the step error.")
+@click.option("--polish", is_flag=True, help="Smooth the path and its pace, the contacts kept.")
 @click.option("--trade-off", is_flag=True, help="Also list trade-offs of time and straightness.")
 @json_option
 @click.option(
@@ -183,6 +184,7 @@ def _request(
         conditions=conditions,
         refine=options["refine"],
         trade_off=options["trade_off"],
+        polish=options["polish"],
     )
 
 

@@ -59,7 +59,8 @@ LABELLED_HOLDS = 80
 class OverlayArtists:
     """What ``draw_overlay`` drew, for later changes and for tests.
 
-    ``holds`` by hold id, ``badges`` in the order of their steps, ``bodies`` by step.
+    ``holds`` by hold id, ``path`` of the centre of mass with its ``dots`` at the steps, ``badges``
+    in the order of their steps, ``bodies`` by step.
     """
 
     ax: Axes
@@ -67,6 +68,7 @@ class OverlayArtists:
     hold_names: tuple[Artist, ...]
     line: Line2D
     path: Line2D
+    dots: Line2D
     badges: tuple[Badge, ...]
     bodies: Mapping[int, tuple[Artist, ...]]
 
@@ -109,12 +111,12 @@ def draw_overlay(
     )  # fmt: skip
     chosen = body_steps(plan.steps, bodies)
     drawn = {s.step: tuple(draw_body(ax, s.joints_mm, s.step, _free_limbs(s))) for s in chosen}
-    path = _draw_path(ax, plan.steps)
+    path, dots = _draw_path(ax, plan)
     ax.set_xlim(-EDGE, wall.width + EDGE)
     ax.set_ylim(low, high)
     ax.set_aspect("equal")
     badges = _draw_placements(ax, wall, plan.steps, (low, high))
-    return OverlayArtists(ax, holds, names, line, path, badges, drawn)
+    return OverlayArtists(ax, holds, names, line, path, dots, badges, drawn)
 
 
 def body_steps(steps: Sequence[PlanStep], bodies: Bodies) -> list[PlanStep]:
@@ -141,16 +143,21 @@ def _free_limbs(step: PlanStep) -> list[str]:
     return [limb for limb in LIMB_NAMES if step.contacts.get(limb) == "free"]
 
 
-def _draw_path(ax: Axes, steps: Sequence[PlanStep]) -> Line2D:
-    """The path of the centre of mass with a dot at every step, open diamonds for flights."""
+def _draw_path(ax: Axes, plan: Plan) -> tuple[Line2D, Line2D]:
+    """The path of the centre of mass, a dot at every step, open diamonds for flights."""
     from matplotlib.patheffects import withStroke
 
+    steps = plan.steps
     x = [step.com_mm[0] / 1000 for step in steps]
     y = [step.com_mm[1] / 1000 for step in steps]
     (path,) = ax.plot(
-        x, y, color=INK, lw=1.7, marker="o", ms=4.2, mfc=INK, mec="white", mew=0.6, zorder=4,
-        solid_joinstyle="round",
+        [point[1] / 1000 for point in plan.com_path_mm],
+        [point[2] / 1000 for point in plan.com_path_mm],
+        color=INK, lw=1.7, zorder=4, solid_joinstyle="round",
     )  # fmt: skip
+    (dots,) = ax.plot(
+        x, y, ls="none", marker="o", ms=4.2, mfc=INK, mec="white", mew=0.6, zorder=4.05
+    )
     path.set_path_effects([withStroke(linewidth=3.4, foreground="white")])
     flights = [i for i, step in enumerate(steps) if step.kind == "flight"]
     if flights:
@@ -158,7 +165,7 @@ def _draw_path(ax: Axes, steps: Sequence[PlanStep]) -> Line2D:
             [x[i] for i in flights], [y[i] for i in flights], ls="none", marker="D", ms=5.2,
             mfc="white", mec=INK, mew=1.2, zorder=4.1,
         )  # fmt: skip
-    return path
+    return path, dots
 
 
 def _draw_placements(

@@ -92,6 +92,8 @@ def _plan_lines(plan: Plan, count: int) -> list[str]:
         unsure.append(f"expected time {number(plan.expected_time_s, 3)} s")
     if plan.chance_clean is not None:
         unsure.append(f"chance of a clean run {number(plan.chance_clean, 2)}")
+    if plan.time_s != plan.lattice_time_s:
+        unsure.append(f"before the polish {number(plan.lattice_time_s, 3)} s")
     if plan.time_interval_s is not None:
         low, high = plan.time_interval_s
         unsure.append(f"80 % interval {number(low, 3)} to {number(high, 3)} s")

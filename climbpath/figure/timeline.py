@@ -19,10 +19,13 @@ NUMBER_ROOM = 0.022
 
 @dataclass(frozen=True)
 class TimeHeightArtists:
-    """What ``draw_time_height`` drew: the curve, the diamonds of flights, the step numbers."""
+    """What ``draw_time_height`` drew: the curve, the dots of steps, the diamonds of flights, the
+    step numbers.
+    """
 
     ax: Axes
     curve: Line2D
+    dots: Line2D
     flights: Line2D
     numbers: tuple[Text, ...]
 
@@ -45,7 +48,11 @@ def draw_time_height(plan: Plan, ax: Axes | None = None) -> TimeHeightArtists:
     times = [step.time_s for step in plan.steps]
     heights = [step.com_mm[1] / 1000 for step in plan.steps]
     (curve,) = ax.plot(
-        times, heights, color=INK, lw=1.4, marker="o", ms=4.2, mfc=INK, mec="white", mew=0.6
+        [point[0] for point in plan.com_path_mm], [point[2] / 1000 for point in plan.com_path_mm],
+        color=INK, lw=1.4,
+    )  # fmt: skip
+    (dots,) = ax.plot(
+        times, heights, ls="none", marker="o", ms=4.2, mfc=INK, mec="white", mew=0.6
     )
     in_flight = [i for i, step in enumerate(plan.steps) if step.kind == "flight"]
     (flights,) = ax.plot(
@@ -74,4 +81,4 @@ def draw_time_height(plan: Plan, ax: Axes | None = None) -> TimeHeightArtists:
     for side in ("top", "right"):
         ax.spines[side].set_visible(False)
     ax.margins(x=0.07, y=0.03)
-    return TimeHeightArtists(ax, curve, flights, tuple(numbers))
+    return TimeHeightArtists(ax, curve, dots, flights, tuple(numbers))

@@ -221,7 +221,7 @@ class Builder:
         there, _ = self._everywhere(left)
         here, there, speed = (np.repeat(a, LASTS) for a in (here, there, speed))
         if limb <= Limb.RH:
-            waits = last == limb + 1
+            waits = last == limb
             wait = self.motion.repeat_wait
             off = np.where(waits, (off * time + np.abs(self.off[here]) * wait)
                            / np.maximum(time + wait, 1e-12), off)
@@ -296,12 +296,12 @@ class Builder:
         drive = self._drive(hub, start, np.where(there >= 0, there, start))
         step = _Step(start, end, change, drive, self.reach(limb, end),
                      mean_distance(self.off[start], self.off[end]), self.event(limb, end),
-                     limb + 1 if limb <= Limb.RH else None)
+                     int(limb) if limb <= Limb.RH else None)
         quickest = [self.motion.travel(change, drive, float(speed)) for speed in self.speeds]
         parts = self._fresh(step, quickest)
         if self.motion.in_place:
             for kind, (duration, of_hand) in enumerate(self.classes):
-                if not (of_hand and step.last):
+                if not of_hand or step.last is None:
                     parts += self._carried(step, quickest, kind, duration)
         return parts
 
@@ -374,12 +374,12 @@ class Builder:
         drive = self._drive(hub, start, end)
         off = mean_distance(self.off[start], self.off[end])
         event, reach = self.event(limb, end), self.reach(limb, end)
-        last = limb + 1 if limb <= Limb.RH else None
+        last = int(limb) if limb <= Limb.RH else None
         parts = []
         for kind, (duration, of_hand) in enumerate(self.classes):
-            if of_hand and last:
+            if of_hand and last is not None:
                 continue
-            least = self.motion.hand_apart if last and self.motion.hand_apart else 0.0
+            least = (self.motion.hand_apart or 0.0) if last is not None else 0.0
             extra = np.maximum(np.maximum(reach, least) - duration, 0.0)
             time = np.maximum(extra, shift)
             need, _ = self.motion.unhurried(change, drive, time)

@@ -17,9 +17,10 @@ from climbpath.route.nodes import LANDED, LASTS, READY
 Array = NDArray[np.float64]
 Ints = NDArray[np.int64]
 
-FLIGHT_BIN = 0.10
+FLIGHT_BIN = 0.097
 FLIGHT_SIDE = 0.35
-"""Flights are sorted by take-off x in bins of this width, and drift sideways by at most that, m."""
+"""Flights are sorted by take-off x in bins of this width, and drift sideways by at most that, m. The
+width is no round one, so that bodies below holds at round places do not lie on the edge of a bin."""
 
 Landings = tuple[Ints, Ints, Array, Array, Ints]
 
@@ -90,7 +91,7 @@ def _landings(
             begun = np.asarray((bins[end] - drift) * FLIGHT_BIN, dtype=np.float64)
             off = mean_distance(begun, builder.off[end])
             phase = builder.phase_of(np.zeros(len(end)), True)
-            found.append((origin[good], builder.code.node(end, level, hand + 1, phase),
+            found.append((origin[good], builder.code.node(end, level, hand, phase),
                           time[good], off, builder.event(hand, end)))
     return found
 

@@ -1,9 +1,9 @@
 """Numbering of search nodes: a centre-of-mass sample, its upward speed, which hand moved last, and
 the phase.
 
-Node = ((sample * speeds + speed) * 3 + last) * phases + phase. ``speed`` is the number of a speed
-level. ``last`` is 0 when the hands have moved together or not at all, 1 after the left, 2 after the
-right. Phase 0 is READY: the next move may begin, and limbs may let go. Phases from LANDED on: a
+Node = ((sample * speeds + speed) * 2 + last) * phases + phase. ``speed`` is the number of a speed
+level. ``last`` is 0 after the left hand and 1 after the right; a climb may begin in either, since the
+hand that moves first has nothing to wait for. Phase 0 is READY: the next move may begin, and limbs may let go. Phases from LANDED on: a
 move has just ended here, of the first, second, … class, and limbs that were free may land with it
 or go on from it. Classes tell how long the move lasted, and the last one may be that of hands.
 Flight nodes follow after all of these.
@@ -20,7 +20,7 @@ from climbpath.contacts import FLOOR, FREE, SMEAR, Limb
 
 Ints = NDArray[np.int64]
 
-LASTS = 3
+LASTS = 2
 READY, LANDED = 0, 1
 
 

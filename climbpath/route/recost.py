@@ -113,7 +113,7 @@ class Recoster:
         shift = float(self.motion.shift(*self._step(tail, head, self._stance(head), True))[0])
         first, second = self._off(tail), self._off(head)
         area = shift * _mean(first, second)
-        if limb <= Limb.RH and int(self.search.code.last(np.array(tail))) == limb + 1:
+        if limb <= Limb.RH and int(self.search.code.last(np.array(tail))) == limb:
             wait = self.motion.repeat_wait
             return _cost(shift + wait, (area + wait * abs(first)) / max(shift + wait, 1e-12))
         return _cost(shift, _mean(first, second))

@@ -21,7 +21,7 @@ from climbpath.posture.samples import Lattice
 from climbpath.route.build import SearchGraph, build_graph
 from climbpath.route.demands import Demand, Opening, Touch
 from climbpath.route.measures import off_line
-from climbpath.route.nodes import READY
+from climbpath.route.nodes import LASTS, READY
 from climbpath.stance.enumerate import Allowed
 from climbpath.stance.options import ContactOptions, contact_options
 from climbpath.stance.stances import StanceSet, stance_set
@@ -31,7 +31,7 @@ from climbpath.wall import Wall
 Ints = NDArray[np.int64]
 Progress = Callable[[str, float], None]
 
-LATTICE_STEP = 0.10
+LATTICE_STEP = 0.20
 """Step of the lattice of centre-of-mass heights, m."""
 
 MEMORY_SHARE = 0.7
@@ -241,11 +241,14 @@ def start_nodes(
         np.zeros(0, np.int64),
         *(np.arange(stances.first_sample[s], stances.first_sample[s + 1]) for s in found),
     ])
+    # Whichever hand moves first has nothing to wait for.
+    nodes = np.concatenate([search.code.node(samples, 0, last, READY) for last in range(LASTS)])
+    nodes = np.sort(nodes)
     held = tuple(
         tuple(int(search.code.event(limb, contact[limb:limb + 1])[0]) for limb in Limb)
-        for contact in stances.contacts[stances.sample_stance[samples]]
+        for contact in stances.contacts[stances.sample_stance[search.code.sample(nodes)]]
     )
-    return search.code.node(samples, 0, 0, READY), held
+    return nodes, held
 
 
 def _targets(wall: Wall, options: ContactOptions, search: SearchGraph) -> Ints:

@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 
 import numpy as np
 from numpy.typing import NDArray
@@ -16,8 +16,10 @@ from climbpath.route.measures import off_line
 from climbpath.route.nodes import LANDED
 from climbpath.route.shortest import Route
 from climbpath.stance.enumerate import batch_of
+from climbpath.stance.stances import StanceSet
 from climbpath.study.climb import Climb
 from climbpath.study.results import Plan, PlanStep, Point2, Point3
+from climbpath.study.track import Track, lattice_track, standing_on
 
 Ints = NDArray[np.int64]
 Array = NDArray[np.float64]
@@ -27,7 +29,8 @@ Array = NDArray[np.float64]
 class Leg:
     """A stretch of a route between two stances at rest.
 
-    ``begin`` and ``end`` are samples, times in us; ``landed`` the limbs that landed on the way.
+    ``begin`` and ``end`` are samples, times in us; ``landed`` the limbs that landed on the way;
+    ``place`` where on the route it ends.
     """
 
     begin: int
@@ -36,6 +39,7 @@ class Leg:
     end_us: int
     flight: bool
     landed: frozenset[int]
+    place: int
 
 
 def legs_of(climb: Climb, route: Route, start_us: int) -> list[Leg]:
@@ -48,7 +52,7 @@ def legs_of(climb: Climb, route: Route, start_us: int) -> list[Leg]:
     stances = climb.search.stances
     owner = stances.sample_stance[code.sample(np.array(begin))]
     landed: set[int] = set()
-    for tail, head, arc in zip(nodes[:-1], nodes[1:], route.arcs, strict=True):
+    for place, (tail, head, arc) in enumerate(zip(nodes[:-1], nodes[1:], route.arcs, strict=True)):
         clock += int(graph.time_us[arc])
         flight |= head >= code.plain
         event = int(graph.event[arc])
@@ -62,26 +66,26 @@ def legs_of(climb: Climb, route: Route, start_us: int) -> list[Leg]:
         if (settles and moved) or (head == nodes[-1] and plain):
             end = tail if settles else head
             legs.append(Leg(int(code.sample(np.array(begin))), int(code.sample(np.array(end))),
-                            begin_us, clock, flight, frozenset(landed)))
+                            begin_us, clock, flight, frozenset(landed),
+                            place if settles else place + 1))
             begin, begin_us, flight = head, clock, False
             owner = stances.sample_stance[code.sample(np.array(head))]
             landed.clear()
     return legs
 
 
-def plan_of(climb: Climb, route: Route, rank: int) -> Plan:
-    """The plan of a route, all figures taken from the route's own nodes and arcs."""
-    search = climb.search
-    source = int(np.flatnonzero(climb.sources == route.nodes[0])[0])
-    start_us = int(climb.source_time[source])
-    legs = legs_of(climb, route, start_us)
-    samples = [int(search.code.sample(route.nodes[0])), *(leg.end for leg in legs)]
-    clock = [0, *(leg.end_us for leg in legs)]
-    steps = _steps(climb, legs, samples, clock)
-    total = start_us + int(search.graph.time_us[route.arcs].sum())
-    area = int(climb.source_area[source]) + int(search.graph.area[route.arcs].sum())
-    all_samples = search.code.sample(route.nodes)
-    path = search.stances.com[all_samples[all_samples >= 0]]
+def plan_of(climb: Climb, route: Route, rank: int, track: Track | None = None) -> Plan:
+    """The plan of a route, all figures taken from the route's own nodes and arcs.
+
+    Or, with a polished ``track`` of it, from that; its lattice time stays.
+    """
+    search, own = climb.search, lattice_track(climb, route)
+    track = track or own
+    legs = _timed(legs_of(climb, route, int(own.clock[0])), track)
+    samples = np.array([int(search.code.sample(route.nodes[0])), *(leg.end for leg in legs)])
+    places = np.array([0, *(leg.place for leg in legs)])
+    steps = _steps(climb, legs, standing_on(track, search.stances, samples, places))
+    area, path = track.area_mm_ms, track.path[:, 1:]
     moves = np.diff(path, axis=0)
     along = climb.options.surface.to_surface(path[[0, -1]])[:, 1]
     gained = float(along[1] - along[0])
@@ -89,11 +93,12 @@ def plan_of(climb: Climb, route: Route, rank: int) -> Plan:
               if limb in ("LH", "RH") and step.contacts[limb] != "free"]
     margins = [step.margin_mm for step in steps if step.margin_mm is not None]
     off = np.abs(off_line(path[:, 0], climb.wall.line_x))
-    seconds = total / 1e6
+    seconds = float(track.clock[-1]) / 1e6
+    com_path = np.column_stack([track.path[:, 0], climb.options.surface.to_surface(path) * 1e3])
     return Plan(
         rank=rank,
         time_s=seconds,
-        lattice_time_s=seconds,
+        lattice_time_s=float(own.clock[-1]) / 1e6,
         expected_time_s=None,
         chance_clean=None,
         time_interval_s=None,
@@ -109,7 +114,16 @@ def plan_of(climb: Climb, route: Route, rank: int) -> Plan:
         margin_min_mm=min(margins) if margins else None,
         load_max=_finite(max(np.inf if s.load is None else s.load for s in steps)),
         steps=steps,
+        com_path_mm=tuple((float(t), float(x), float(y), float(z)) for t, x, y, z in com_path),
     )
+
+
+def _timed(legs: list[Leg], track: Track) -> list[Leg]:
+    """The legs with the times of a track."""
+    ends = [int(track.clock[leg.place]) for leg in legs]
+    begins = [int(track.clock[0]), *ends[:-1]]
+    return [replace(leg, begin_us=begin, end_us=end)
+            for leg, begin, end in zip(legs, begins, ends, strict=True)]
 
 
 def _hand_holds(steps: tuple[PlanStep, ...]) -> tuple[str, ...]:
@@ -134,34 +148,28 @@ def _pad_off(climb: Climb, legs: list[Leg]) -> float | None:
     return None
 
 
-def _steps(climb: Climb, legs: list[Leg], samples: list[int], clock: list[int]
-           ) -> tuple[PlanStep, ...]:
-    """All steps, bodies assembled together."""
-    search = climb.search
-    stances = search.stances
-    index = np.array(samples)
-    owner = stances.sample_stance[index]
-    batch = batch_of(climb.options, climb.linkage, stances.contacts[owner])
-    joints = assemble(climb.linkage, batch, stances.turn[..., index], stances.shift[:, index])
+def _steps(climb: Climb, legs: list[Leg], stands: StanceSet) -> tuple[PlanStep, ...]:
+    """All steps, bodies assembled together; ``stands``: how the body stands at each."""
+    clock = [0, *(leg.end_us for leg in legs)]
+    batch = batch_of(climb.options, climb.linkage, stands.contacts)
+    joints = assemble(climb.linkage, batch, stands.turn, stands.shift)
     world = np.moveaxis(batch.to_world(np.moveaxis(joints, 0, 1)), (0, 1, 2), (2, 1, 0))
     surface = climb.options.surface
     placed = surface.to_surface(world) * 1e3
-    com = surface.to_surface(stances.com[index]) * 1e3
+    com = surface.to_surface(stands.com) * 1e3
     loads = rest_loads(
         climb.options, hold_cones(climb.wall, climb.options), climb.linkage,
-        capacities_of(climb.athlete), stances.contacts[owner], stances.points[owner], world,
-        stances.com[index],
+        capacities_of(climb.athlete), stands.contacts, stands.points, world, stands.com,
     )
-    points = surface.to_surface(stances.points[owner]) * 1e3
+    points = surface.to_surface(stands.points) * 1e3
     steps = []
-    for k, sample in enumerate(samples):
-        contacts = stances.contacts[owner[k]]
-        before = stances.contacts[owner[k - 1]] if k else contacts
+    for k, contacts in enumerate(stands.contacts):
+        before = stands.contacts[k - 1] if k else contacts
         landed = legs[k - 1].landed if k else frozenset()
         moved = tuple(LIMB_NAMES[limb] for limb in Limb
                       if contacts[limb] != before[limb] or limb in landed)
         kind = "start" if k == 0 else "flight" if legs[k - 1].flight else "move"
-        if k == len(samples) - 1 and k:
+        if k == len(legs) and k:
             kind = "finish"
         where: dict[str, Point2] = {}
         for limb in Limb:
@@ -172,7 +180,7 @@ def _steps(climb: Climb, legs: list[Leg], samples: list[int], clock: list[int]
                 where[LIMB_NAMES[limb]] = (float(points[k, limb, 0]), float(points[k, limb, 1]))
         speed = None
         if k:
-            change = stances.com[sample] - stances.com[samples[k - 1]]
+            change = stands.com[k] - stands.com[k - 1]
             lasted = (clock[k] - max(clock[k - 1], legs[0].begin_us)) / 1e6
             speed = float(np.linalg.norm(change)) / lasted if lasted > 0 else None
         steps.append(PlanStep(
@@ -185,7 +193,7 @@ def _steps(climb: Climb, legs: list[Leg], samples: list[int], clock: list[int]
             com_mm=_point(com[k]),
             joints_mm={name: _point(placed[k, j]) for j, name in enumerate(JOINTS)},
             speed_m_s=speed,
-            margin_mm=None if kind == "flight" else float(stances.margin[owner[k]]) * 1e3,
+            margin_mm=None if kind == "flight" else float(stands.margin[k]) * 1e3,
             load=_finite(loads.load[k]),
             load_by_limb={
                 LIMB_NAMES[limb]: float(loads.by_limb[k, limb]) for limb in Limb
@@ -201,6 +209,3 @@ def _finite(value: float) -> float | None:
 
 def _point(values: Array) -> Point3:
     return (float(values[0]), float(values[1]), float(values[2]))
-
-
-

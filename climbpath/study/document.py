@@ -88,6 +88,7 @@ def _plan(plan: Plan) -> dict[str, Any]:
         "margin_min_mm": _length(plan.margin_min_mm),
         "load_max": _share(plan.load_max),
         "steps": [_step(step) for step in plan.steps],
+        "com_path_mm": [[_time(time), *_point(place)] for time, *place in plan.com_path_mm],
     }
 
 

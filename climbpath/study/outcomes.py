@@ -14,8 +14,9 @@ import numpy as np
 from numpy.typing import NDArray
 
 from climbpath.body import Athlete
-from climbpath.study.climb import Conditions
-from climbpath.study.plan import PlanRequest, plan
+from climbpath.study.climb import Climb, Conditions, demands_of, prepare
+from climbpath.study.decode import plan_of
+from climbpath.study.plan import PlanRequest, best_route
 from climbpath.study.results import Plan
 from climbpath.wall import Wall
 
@@ -156,16 +157,9 @@ def opening_way(chosen: Plan, wall: Wall) -> OpeningWay:
     )
 
 
-def _without_hands_on(wall: Wall, hold_id: str) -> Wall:
-    """The wall with that hold for feet alone."""
-    return replace(wall, holds=tuple(
-        replace(hold, use="foot") if hold.id == hold_id else hold for hold in wall.holds
-    ))
-
-
-def _best(wall: Wall, athlete: Athlete, request: PlanRequest) -> Plan | None:
-    found = plan(wall, athlete, request).plans
-    return found[0] if found else None
+def _best(climb: Climb, forbidden: Sequence[int] = ()) -> Plan | None:
+    found = best_route(climb, PlanRequest(), forbidden)
+    return None if found is None else plan_of(climb, found.route, 1)
 
 
 def body_outcome(wall: Wall, athlete: Athlete) -> BodyOutcome:
@@ -176,15 +170,16 @@ def body_outcome(wall: Wall, athlete: Athlete) -> BodyOutcome:
     stand on it, since that is how use was counted in the observed runs.
     """
     blank = BodyOutcome(athlete.name, athlete.stature, athlete.mass)
-    best = _best(wall, athlete, PlanRequest())
+    climb = prepare(wall, athlete, Conditions())
+    best = _best(climb)
     if best is None:
         return blank
     uses = OPENING_HOLD in best.hand_holds
     if uses:
-        other = _best(_without_hands_on(wall, OPENING_HOLD), athlete, PlanRequest())
+        other = _best(climb, [climb.options.index(OPENING_HOLD)])
     else:
-        asked = PlanRequest(conditions=Conditions(include=(OPENING_HOLD,)))
-        other = _best(wall, athlete, asked)
+        asked = Conditions(include=(OPENING_HOLD,))
+        other = _best(replace(climb, demands=demands_of(climb.options, asked, climb.search)))
     ways = (opening_way(best, wall), None if other is None else opening_way(other, wall))
     first, second, third = stretch_speeds(best, wall)
     return replace(

@@ -30,6 +30,7 @@ from climbpath.study.climb import (
     prepare,
 )
 from climbpath.study.decode import plan_of
+from climbpath.study.polish import polish
 from climbpath.study.results import Plan, PlanResult
 from climbpath.study.why_not import why_not
 from climbpath.wall import Wall
@@ -70,6 +71,7 @@ class PlanRequest:
     conditions: Conditions = field(default_factory=Conditions)
     refine: bool = False
     trade_off: bool = False
+    polish: bool = False
     step: float = LATTICE_STEP
 
 
@@ -196,8 +198,11 @@ def plan(
     for best in routes:
         recoster.check(best.route)
     misses = misses_of(climb.options, climb.linkage, climb.search, climb.motion)
-    plans = tuple(with_misses(plan_of(climb, best.route, rank), best.route, misses)
-                  for rank, best in enumerate(routes, start=1))
+    tracks = [polish(climb, best.route).track if asked.polish else None for best in routes]
+    plans = tuple(
+        with_misses(plan_of(climb, best.route, rank, track), best.route, misses)
+        for rank, (best, track) in enumerate(zip(routes, tracks, strict=True), start=1)
+    )
     trade_off: tuple[tuple[float, float, float], ...] = ()
     if plans and asked.trade_off:
         trade_off = trade_off_points(climb, asked)
@@ -261,5 +266,5 @@ def _with_lattice_error(
     best = best_route(climb, finer)
     if best is None:
         return plans
-    error = abs(plans[0].time_s - plan_of(climb, best.route, 1).time_s)
+    error = abs(plans[0].lattice_time_s - plan_of(climb, best.route, 1).time_s)
     return tuple(replace(p, lattice_error_s=error) for p in plans)

@@ -11,6 +11,7 @@ from dataclasses import dataclass
 
 Point2 = tuple[float, float]
 Point3 = tuple[float, float, float]
+PathPoint = tuple[float, float, float, float]
 
 
 @dataclass(frozen=True)
@@ -39,7 +40,11 @@ class PlanStep:
 
 @dataclass(frozen=True)
 class Plan:
-    """One sequence from start to finish with its figures; rank 1 is the best."""
+    """One sequence from start to finish with its figures; rank 1 is the best.
+
+    ``com_path_mm``: the path of the centre of mass, (time_s, x_mm, y_mm, z_mm) from the signal on;
+    between its points it runs evenly.
+    """
 
     rank: int
     time_s: float
@@ -59,6 +64,7 @@ class Plan:
     margin_min_mm: float | None
     load_max: float | None
     steps: tuple[PlanStep, ...]
+    com_path_mm: tuple[PathPoint, ...] = ()
 
 
 @dataclass(frozen=True)

@@ -5,6 +5,7 @@ from __future__ import annotations
 import json
 import subprocess
 import sys
+from dataclasses import replace
 from datetime import date
 from pathlib import Path
 from typing import Any
@@ -12,13 +13,14 @@ from typing import Any
 import jsonschema
 import pytest
 
-from climbpath.body import Athlete
+from climbpath.body import Athlete, make_athlete, write_athlete
 from climbpath.study.climb import Conditions
 from climbpath.study.plan import PlanRequest
 from climbpath.study.sequence import read_sequences
 from climbpath.wall import Wall
 from tests.cli.running import BODY, HOLDS, START, Done, run_command, wall_text, write_wall_file
 from tests.schemas import PLAN_SCHEMA
+from tests.study.solved import STRONG
 
 FILES = ("overlay.pdf", "overlay.png", "overlay.svg", "plan.csv", "plan.json", "plan.txt")
 
@@ -384,3 +386,23 @@ def test_help_needs_no_numpy() -> None:
     )  # fmt: skip
     assert done.returncode == 0, done.stderr
     assert "draws nothing at random" in " ".join(done.stdout.split())
+
+
+def test_polish_keeps_contacts_and_lattice_time(plan: Any, wall: Path, tmp_path: Path) -> None:
+    body = make_athlete(sex="male", stature=1.78, mass=70.0, name="Made")
+    file = tmp_path / "athlete.toml"
+    # Strong enough for a way up whatever the defaults are.
+    write_athlete(replace(body, capacity=STRONG), file)
+    given = ("--athlete", str(file))
+    before = document_of(plan(wall, "--json", "-", body=given))["plans"][0]
+    done = plan(wall, "--json", "-", "--polish", "--out", tmp_path / "out", body=given)
+    after = document_of(done)["plans"][0]
+    assert after["lattice_time_s"] == before["lattice_time_s"] == before["time_s"]
+    assert after["time_s"] <= before["time_s"]
+    assert after["com_path_mm"][0][0] == 0.0
+    assert after["com_path_mm"][-1][0] == after["time_s"]
+    assert [step["contacts"] for step in after["steps"]] == [
+        step["contacts"] for step in before["steps"]
+    ]
+    text = (tmp_path / "out" / "plan.txt").read_text()
+    assert ("before the polish" in text) == (after["time_s"] != after["lattice_time_s"])

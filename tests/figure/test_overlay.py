@@ -57,13 +57,16 @@ def with_hold_named(name: str) -> tuple[PlanResult, Wall]:
 def test_line_path_and_holds_lie_where_the_result_says(
     drawn: OverlayArtists, wall: Wall
 ) -> None:
-    steps = sample_plan(wall).steps
+    plan = sample_plan(wall)
     assert list(drawn.line.get_xdata()) == [1.5, 1.5]
     assert drawn.line.get_linestyle() == "--"
-    assert list(drawn.path.get_xdata()) == [step.com_mm[0] / 1000 for step in steps]
-    assert list(drawn.path.get_ydata()) == [step.com_mm[1] / 1000 for step in steps]
+    assert list(drawn.path.get_xdata()) == [point[1] / 1000 for point in plan.com_path_mm]
+    assert list(drawn.path.get_ydata()) == [point[2] / 1000 for point in plan.com_path_mm]
     assert drawn.path.get_linestyle() == "-"
-    assert drawn.path.get_marker() == "o"
+    assert list(drawn.dots.get_xdata()) == [step.com_mm[0] / 1000 for step in plan.steps]
+    assert list(drawn.dots.get_ydata()) == [step.com_mm[1] / 1000 for step in plan.steps]
+    assert drawn.dots.get_marker() == "o"
+    assert drawn.dots.get_linestyle() == "None"
     assert set(drawn.holds) == {hold.id for hold in wall.holds}
     box = drawn.holds["pad"].get_path().get_extents()
     # The pad of the sample: 300 by 400 mm about (1500, 14700).
@@ -234,8 +237,10 @@ def test_legend_names_what_is_drawn(wall: Wall) -> None:
 def test_time_against_height(wall: Wall) -> None:
     plan = sample_plan(wall)
     drawn = draw_time_height(plan)
-    assert list(drawn.curve.get_xdata()) == [step.time_s for step in plan.steps]
-    assert list(drawn.curve.get_ydata()) == [step.com_mm[1] / 1000 for step in plan.steps]
+    assert list(drawn.curve.get_xdata()) == [point[0] for point in plan.com_path_mm]
+    assert list(drawn.curve.get_ydata()) == [point[2] / 1000 for point in plan.com_path_mm]
+    assert list(drawn.dots.get_xdata()) == [step.time_s for step in plan.steps]
+    assert list(drawn.dots.get_ydata()) == [step.com_mm[1] / 1000 for step in plan.steps]
     assert list(drawn.flights.get_xdata()) == [plan.steps[11].time_s]
     assert drawn.numbers[0].get_text() == "0"
 

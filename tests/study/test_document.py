@@ -27,6 +27,7 @@ PLAN_KEYS = [
     "rank", "time_s", "lattice_time_s", "expected_time_s", "chance_clean", "time_interval_s",
     "lattice_error_s", "pad_off_s", "lateral_area_mm_s", "lateral_mean_mm", "lateral_max_mm",
     "sideways_mm", "path_ratio", "hand_moves", "hand_holds", "margin_min_mm", "load_max", "steps",
+    "com_path_mm",
 ]  # fmt: skip
 STEP_KEYS = [
     "step", "time_s", "kind", "moved", "contacts", "points_mm", "com_mm", "joints_mm",

@@ -2,6 +2,8 @@
 
 from __future__ import annotations
 
+from dataclasses import dataclass, field
+from types import SimpleNamespace
 from typing import Any
 
 import pytest
@@ -15,10 +17,7 @@ from climbpath.study.outcomes import (
     opening_way,
     stretch_speeds,
 )
-from climbpath.study.plan import PlanRequest
 from climbpath.study.published_lane import published_lane
-from climbpath.study.results import PlanResult
-from climbpath.wall import Wall
 from tests.evidence_samples import made_plan
 
 LANE = published_lane()
@@ -67,17 +66,29 @@ def test_the_mean_distance_from_the_line_is_over_time_and_crosses_it() -> None:
     assert (way.time_s, way.lateral_max_mm) == (7.2, 300.0)
 
 
-def climbed(monkeypatch: pytest.MonkeyPatch, answers: list[Any]) -> list[tuple[Wall, PlanRequest]]:
-    """Let ``plan`` give these plans (or None) in turn; what it was asked is returned."""
-    asked: list[tuple[Wall, PlanRequest]] = []
+@dataclass(frozen=True)
+class Ready:
+    """A search that is asked for plans, of which only the demands matter."""
 
-    def plan(wall: Wall, athlete: object, request: PlanRequest) -> PlanResult:
-        asked.append((wall, request))
-        found = answers[len(asked) - 1]
-        plans = () if found is None else (found,)
-        return PlanResult("", "", 1500.0, "time", (), plans, (), None)
+    demands: tuple[Any, ...] = ()
+    options: Any = field(
+        default_factory=lambda: SimpleNamespace(index=lambda name: f"hold {name}"))
+    search: Any = None
 
-    monkeypatch.setattr(outcomes, "plan", plan)
+
+def climbed(monkeypatch: pytest.MonkeyPatch, answers: list[Any]) -> list[tuple[Any, Any]]:
+    """Let the search find these plans (or None) in turn; its demands and forbidden holds, as they
+    were asked, are returned.
+    """
+    asked: list[tuple[Any, Any]] = []
+
+    def best(climb: Ready, forbidden: Any = ()) -> Any:
+        asked.append((climb.demands, forbidden))
+        return answers[len(asked) - 1]
+
+    monkeypatch.setattr(outcomes, "prepare", lambda *_: Ready())
+    monkeypatch.setattr(outcomes, "demands_of", lambda _options, asks, _search: asks.include)
+    monkeypatch.setattr(outcomes, "_best", best)
     return asked
 
 
@@ -95,13 +106,8 @@ def test_the_best_plan_is_one_way_and_the_other_is_searched(
     assert found.with_hold is not None
     assert found.without_hold is not None
     assert (found.with_hold.time_s, found.without_hold.time_s) == (7.2, 9.0)
-    # Hold 4 serves feet alone in the second search; all else is as it was.
-    assert [request for _, request in asked] == [PlanRequest(), PlanRequest()]
-    assert asked[0][0] == LANE
-    changed = [hold.id for hold, before in zip(asked[1][0].holds, LANE.holds, strict=True)
-               if hold != before]
-    assert changed == ["4"]
-    assert asked[1][0].hold("4").use == "foot"
+    # Hold 4 is forbidden to hands alone in the second search; all else is as it was.
+    assert asked == [((), ()), ((), ["hold 4"])]
 
 
 def test_a_best_plan_without_the_hold_is_set_against_one_that_must_touch_it(
@@ -111,7 +117,7 @@ def test_a_best_plan_without_the_hold_is_set_against_one_that_must_touch_it(
     found = body_outcome(LANE, BODY)
     assert found.with_hold is None
     assert found.without_hold is not None
-    assert asked[1][1].conditions.include == ("4",)
+    assert asked == [((), ()), (("4",), ())]
 
 
 def test_no_way_up_is_an_outcome(monkeypatch: pytest.MonkeyPatch) -> None:
