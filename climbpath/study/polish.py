@@ -16,7 +16,7 @@ never slower than its lattice time, which goes on to decide rank.
 
 from __future__ import annotations
 
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from itertools import pairwise
 from math import ceil
 from typing import Literal
@@ -43,7 +43,7 @@ Array = NDArray[np.float64]
 Ints = NDArray[np.int64]
 Slopes = tuple[Array | None, Array | None]
 
-GRID = 0.025
+GRID = 0.05
 LEAST_GRID = 4
 """Intervals of a rise are no longer than this, m, and there are at least so many."""
 
@@ -85,6 +85,9 @@ class Paced:
         return self.shape.bounds
 
 
+Known = dict[tuple[Piece, bytes], Paced | int]
+
+
 @dataclass(frozen=True)
 class Polish:
     """What became of a route: its track, and the pieces that were paced anew."""
@@ -99,13 +102,13 @@ def polish(climb: Climb, route: Route) -> Polish:
         return Polish(lattice_track(climb, route), ())
     reader = RouteReader(climb, route)
     kept: set[int] = set()
-    crests, paced = None, list[Paced]()
+    crests, paced, known = None, list[Paced](), Known()
     for turn in range(len(reader.kinds) + 1):
         pieces = reader.pieces(kept)
         if not pieces:
             break
         crests = crests_of(reader, pieces)
-        paced, bad = _all_paced(reader, crests, pieces, climb.motion.capacities.speed)
+        paced, bad = _all_paced(reader, crests, pieces, climb.motion.capacities.speed, known)
         if not bad:
             break
         for piece, rise in bad:
@@ -115,12 +118,16 @@ def polish(climb: Climb, route: Route) -> Polish:
     return Polish(_track(reader, crests, paced), tuple(paced))
 
 
-def _all_paced(reader: RouteReader, crests: Crests, pieces: list[Piece], fastest: float
-               ) -> tuple[list[Paced], list[tuple[Piece, int]]]:
-    """The pieces in least time; and those for which that fails, with the rise that is to blame."""
+def _all_paced(
+    reader: RouteReader, crests: Crests, pieces: list[Piece], fastest: float, known: Known,
+) -> tuple[list[Paced], list[tuple[Piece, int]]]:
+    """The pieces in least time; and those for which that fails, with the rise that is to blame.
+
+    ``known``: what was found for pieces before, to look up and to add to.
+    """
     paced, bad, first = list[Paced](), list[tuple[Piece, int]](), 0
     for piece in pieces:
-        found = _paced(reader, crests, piece, first, fastest)
+        found = _paced(reader, crests, piece, first, fastest, known)
         if isinstance(found, Paced):
             paced.append(found)
         else:
@@ -136,8 +143,9 @@ def _all_paced(reader: RouteReader, crests: Crests, pieces: list[Piece], fastest
     return paced, bad
 
 
-def _paced(reader: RouteReader, crests: Crests, piece: Piece, first: int, fastest: float
-           ) -> Paced | int:
+def _paced(
+    reader: RouteReader, crests: Crests, piece: Piece, first: int, fastest: float, known: Known,
+) -> Paced | int:
     """The piece in least time, or the number of the rise that is to blame if that is no gain."""
     row = {p: first + sum(rise <= p for rise in piece.rises)
            for p in range(piece.begin, piece.end)}
@@ -149,10 +157,17 @@ def _paced(reader: RouteReader, crests: Crests, piece: Piece, first: int, fastes
     marks = [piece.begin, *piece.crests[1:]]
     before = np.array([sum(reader.time[a:b]) for a, b in pairwise(marks)])
     slopes = _slopes(reader, crests, piece, first)
+    own = slice(first, first + len(piece.crests))
+    given = [crests.com[own], crests.strength[own], least, *(s for s in slopes if s is not None)]
+    key = (piece, b"".join(values.tobytes() for values in given))
+    if key in known:
+        earlier = known[key]
+        return earlier if isinstance(earlier, int) else replace(earlier, first=first)
     found = _along(crests, piece, first, fastest, least, before, slopes)
     if isinstance(found, int) and any(slope is not None for slope in slopes):
         # The search does not ask a flight to drift the way the body went before.
         found = _along(crests, piece, first, fastest, least, before, (None, None))
+    known[key] = found
     return found
 
 

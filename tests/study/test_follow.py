@@ -29,7 +29,7 @@ CAPACITY = {
 }
 """Every capacity, so that no default matters."""
 
-STEP = 0.2
+STEP, FINE = 0.2, 0.1
 CASES = [(0, MAN), (2, MAN), (1, WOMAN),
          *(pytest.param(seed, body, marks=pytest.mark.slow)
            for seed, body in ((3, MAN), (4, MAN), (0, WOMAN), (2, WOMAN), (4, WOMAN)))]
@@ -160,7 +160,7 @@ def test_a_run_that_cannot_be_followed_gives_nan() -> None:
     good = run_of(START, (("RH", "3"),), (("LH", "pad"),))
     far = run_of(START, (("RH", "pad"),))
     apart = run_of((("LH", "1"), ("RH", "4")), (("LH", "pad"),))
-    followed = Follower(wall, athlete(*MAN), (good, far, apart), STEP)
+    followed = Follower(wall, athlete(*MAN), (good, far, apart), FINE)
     times = followed.times(CAPACITY)
     assert np.isfinite(times[0]).all()
     assert [len(t) for t in times] == [2, 1, 1]
@@ -175,7 +175,7 @@ def test_a_run_that_ends_below_the_finish_has_the_times_up_to_there() -> None:
     wall = small_wall(0)
     whole = run_of(START, (("RH", "3"),), (("LH", "pad"),))
     part = run_of(START, (("RH", "3"),), total=9.0)
-    times = Follower(wall, athlete(*MAN), (whole, part), STEP).times(CAPACITY)
+    times = Follower(wall, athlete(*MAN), (whole, part), FINE).times(CAPACITY)
     # Alone, the first hold may be reached no later than on the way to the pad.
     assert len(times[1]) == 2
     assert np.isfinite(times[1][0])
@@ -192,7 +192,7 @@ def test_runs_with_the_same_hands_share_their_prediction() -> None:
     total = run_of(START, (("RH", "3"),), (("LH", "pad"),), total=3.0)
     no_times = Sequence("total", (one.steps[0], (Placement("RH", "3"),), (Placement("LH", "pad"),)),
                         3.0)
-    followed = Follower(wall, athlete(*MAN), (one, feet, total, no_times), STEP)
+    followed = Follower(wall, athlete(*MAN), (one, feet, total, no_times), FINE)
     assert len(followed.grounds) == 1
     times = followed.times(CAPACITY)
     np.testing.assert_array_equal(times[0], times[1])
