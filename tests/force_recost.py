@@ -6,11 +6,11 @@ nodes are taken apart as the docstring of ``route/nodes.py`` says, loads come fr
 
 - strength: 1 over the load at rest of a sample's contacts, in body weights; a step is carried by
   the mean of the strengths of what stays, at its start and at the level where it ends;
-- a rise by D from v1: v2² = v1² + 2 D g (c (1 − v / V0) − 1) at the mean speed v = (v1 + v2) / 2,
-  found by halving, T = D / v; a shift across or out by d, from rest to rest with three tenths of c,
+- a rise by D from v1 by v' = g (c (1 − v / V0) − 1), whose height after a time is known, the time by
+  halving; a shift across or out by d, from rest to rest with three tenths of c,
   takes 2 √(d / (.3 g c)) and leaves √(1 − .3²) of c for the rise;
-- a step that takes T longer than it must starts at D / T − a T / 2 with the acceleration a at D /
-  T, or is waited for at rest where the contacts hold the body at both ends;
+- a step that takes T longer than it must starts at the speed that makes it take T, or is waited for
+  at rest where the contacts hold the body at both ends;
 - a step down is fallen and stopped, from rest to rest; a release, and a landing with a move, are a
   shift at one level at a fixed speed;
 - a limb that lands needs its start, its way from where it would rest, and settling; a hand more to
@@ -22,7 +22,7 @@ from __future__ import annotations
 
 from collections.abc import Sequence
 from dataclasses import dataclass, fields
-from math import asin, hypot, inf, pi, sqrt
+from math import asin, exp, hypot, inf, log, pi, sqrt
 
 import numpy as np
 from numpy.typing import NDArray
@@ -63,7 +63,7 @@ class Figures:
     foot_start: float
     settle_poor: float
     side_speed: float
-    longer: tuple[float, ...]
+    durations: tuple[float, ...]
     hand_apart: float
     pair: float
     speeds: tuple[float, ...]
@@ -111,7 +111,7 @@ class ForceRecoster:
         self.own = capacities or capacities_of(climb.athlete)
         self.stances = climb.search.stances
         self.speeds = self.figures.speeds
-        self.durations = (self.figures.least_step, *self.figures.longer)
+        self.durations = self.figures.durations
         self.classes = (*self.durations, self.figures.hand_apart)
         self.phases = 1 + len(self.classes)
         self.per_sample = len(self.speeds) * LASTS * self.phases
@@ -160,8 +160,10 @@ class ForceRecoster:
                                        int(self.stances.first_sample[tail.stance + 1]))
             if int(self.stances.level[sample]) == head.level
         ]
+        highest = int(self.stances.first_sample[tail.stance + 1]) - 1
+        below = int(self.stances.level[highest]) < head.level
         near = min(there, key=lambda s: abs(float(self.stances.com[s, 0]) - head.com[0]),
-                   default=tail.sample)
+                   default=highest if below else tail.sample)
         return self.strength(tail.sample), self.strength(near)
 
     def upward(self, tail: Node, head: Node, level: bool = False) -> tuple[float, float, float,
@@ -180,20 +182,27 @@ class ForceRecoster:
             time = 2.0 * sqrt(aside / push) if push > 0.0 else inf
         return rise, left * mean, time, left * min(first, second) >= 1.0
 
+    def after(self, c: float, v1: float, time: float) -> tuple[float, float]:
+        """Height risen and speed after ``time`` of v' = g (c (1 − v / V0) − 1)."""
+        fall = max(G * c / self.v0, 1e-5)
+        limit, left = G * (c - 1.0) / fall, exp(-fall * time)
+        return limit * time + (v1 - limit) * (1.0 - left) / fall, limit + (v1 - limit) * left
+
     def quickest(self, rise: float, c: float, v1: float) -> Way:
-        """By halving: what is left of v2² − v1² − 2 D a grows with v2."""
-
-        def left(v2: float) -> float:
-            return v2 * v2 - v1 * v1 - 2.0 * rise * G * (c * (1.0 - (v1 + v2) / 2.0 / self.v0)
-                                                         - 1.0)
-
-        if rise <= ONE_LEVEL or left(0.0) > 0.0:
+        """By halving the time, in which the body does not yet fall back."""
+        if rise <= ONE_LEVEL or (c <= 1.0 and v1 <= 0.0):
             return inf, 0.0
-        low, high = 0.0, 60.0
-        for _ in range(200):
+        low, high = 0.0, 1e3
+        if c < 1.0:
+            fall = max(G * c / self.v0, 1e-5)
+            limit = G * (c - 1.0) / fall
+            high = log(1.0 - v1 / limit) / fall
+        if self.after(c, v1, high)[0] < rise:
+            return inf, 0.0
+        for _ in range(100):
             middle = (low + high) / 2.0
-            low, high = (low, middle) if left(middle) > 0.0 else (middle, high)
-        return (2.0 * rise / (v1 + high) if v1 + high > 0.0 else inf), high
+            low, high = (low, middle) if self.after(c, v1, middle)[0] > rise else (middle, high)
+        return high, max(self.after(c, v1, high)[1], 0.0)
 
     def down(self, depth: float, c: float) -> float:
         """From rest to rest: falling, then stopping."""
@@ -208,11 +217,12 @@ class ForceRecoster:
 
     def in_time(self, rise: float, c: float, time: float, held: bool) -> Way:
         """Start and end speed of a rise that takes ``time``; start inf where it cannot."""
-        mean = rise / time if time > 0.0 else inf
         if rise <= ONE_LEVEL:
             return (0.0 if held else inf), 0.0
-        pull = G * (c * max(1.0 - mean / self.v0, 0.0) - 1.0)
-        first, second = mean - pull * time / 2.0, mean + pull * time / 2.0
+        # The height after a time is linear in the speed at its start.
+        still, moving = self.after(c, 0.0, time)[0], self.after(c, 1.0, time)[0]
+        first = (rise - still) / (moving - still)
+        second = self.after(c, first, time)[1]
         if second < 0.0:
             return inf, 0.0
         if first < 0.0:
@@ -330,7 +340,8 @@ class ForceRecoster:
 
     def rise(self, tail: Node, head: Node) -> Arc:
         time, after = self.travel(tail, head)
-        phase = self.phase(time, False) if time + SAME_TIME >= self.durations[0] else 0
+        long = time + SAME_TIME >= self.figures.least_step
+        phase = self.phase(time, False) if long else 0
         self.expect(tail.phase == 0 and head.phase == phase and head.speed == self.floor(after)
                     and head.last == tail.last and head.level > tail.level, tail, head)
         return self.cost("rise", time, self.between(tail, head))

@@ -8,13 +8,13 @@ to the force, and capacities fall linearly with the speed of shortening, so
     a(v) = g (c (1 − v / V0) − 1)
 
 is the greatest upward acceleration at the upward speed v; contacts that go limp let the body fall
-with −g. A step that rises by D while the speed goes from v1 to v2 is costed with the acceleration
-at its mean speed, v = (v1 + v2) / 2, which is exact for the work done by a force that falls evenly:
+with −g. A step that rises by D is made at full strength, with the mean c of its two ends as if it
+were the same all along: v' = A − B v, with A = g (c − 1) and B = g c / V0, so
 
-    v2² = v1² + 2 D a(v),    T = 2 D / (v1 + v2)
+    v = A / B + (v1 − A / B) exp(−B T),    D = v1 w / B + (A / B) (T − w / B),   w = 1 − exp(−B T)
 
-and with the mean strength of its two ends, as if it changed evenly on the way. With c < 1 a step
-is made on speed that was brought along, as far as it carries. A step may take longer: its speed is
+gives the time T (by Newton's method) and the speed at its end. With c < 1 a step is made
+on speed that was brought along, as far as it carries. A step may take longer: its speed is
 then shed at the start, or, from rest, spent waiting, as far as the contacts can hold the body. So
 more strength, more speed or more time to spare never make anything worse.
 
@@ -73,6 +73,19 @@ LEVEL = 1e-9
 LONGEST = 1e3
 """No step takes longer than this, s."""
 
+LEAST_SLOPE = 1e-5
+"""Contacts that give next to nothing are taken to lose it this slowly with speed, 1/s: too little
+to matter, and enough to divide by."""
+
+ROUNDS = 4
+"""Rounds of Newton's method for the time of a step: it is then known to 10 µs."""
+
+
+def _risen(limit: Array, slope: Array, speed: float, time: Array) -> Array:
+    """Height after ``time`` of v' = B (limit − v) from ``speed``."""
+    share = -np.expm1(-slope * time) / slope
+    return np.asarray(speed * share + limit * (time - share))
+
 
 @dataclass(frozen=True)
 class ForceMotion:
@@ -89,7 +102,7 @@ class ForceMotion:
     foot_start: float = 0.06
     settle_poor: float = 0.10
     side_speed: float = 3.0
-    longer: tuple[float, ...] = (0.25, 0.40)
+    longer: tuple[float, ...] = (0.14, 0.25, 0.40)
     speeds: tuple[float, ...] = SPEEDS
     stronger: float = 1.0
     hand_apart: float | None = 0.16
@@ -105,8 +118,8 @@ class ForceMotion:
 
     @property
     def durations(self) -> tuple[float, ...]:
-        """The least step and the longer classes."""
-        return (self.least_step, *self.longer)
+        """Those that credit nothing, and longer ones."""
+        return (0.0, *self.longer)
 
     def strengths(
         self, wall: Wall, options: ContactOptions, linkage: Linkage, stances: StanceSet
@@ -131,17 +144,32 @@ class ForceMotion:
         held = left * np.minimum(drive.start, drive.end) >= 1.0
         return change[:, 1], left * strength, time, held
 
+    def _law(self, strength: Array) -> tuple[Array, Array]:
+        """A and B of v' = A − B v at full strength."""
+        slope = np.maximum(GRAVITY * strength / self.capacities.speed, LEAST_SLOPE)
+        return GRAVITY * (strength - 1.0), slope
+
     def _quickest(self, rise: Array, strength: Array, speed: float) -> tuple[Array, Array]:
         """Time and end speed at full strength from ``speed``; inf where it does not carry."""
-        fastest = self.capacities.speed
-        slope = rise * GRAVITY * strength / fastest
-        rest = slope * speed - speed**2 - 2.0 * rise * GRAVITY * (strength - 1.0)
-        under = slope**2 - 4.0 * rest
-        after = (np.sqrt(np.maximum(under, 0.0)) - slope) / 2.0
-        carried = (under >= 0.0) & (after >= 0.0) & (rise > LEVEL)
-        after = np.where(carried, after, 0.0)
-        time = np.where(carried, 2.0 * rise / np.maximum(speed + after, 1e-12), np.inf)
-        return time, after
+        pull, slope = self._law(strength)
+        limit = pull / slope
+        # A body that slows down comes to a halt after this time, and so high.
+        slows = (pull < 0.0) & (speed > 0.0)
+        halt = np.where(slows, np.log1p(-speed / np.where(slows, limit, -1.0)) / slope, np.inf)
+        top = _risen(limit, slope, speed, np.where(slows, halt, 0.0))
+        carried = (rise > LEVEL) & np.where(pull < 0.0, slows & (top >= rise), True)
+        carried &= (pull > 0.0) | (speed > 0.0)
+        # Newton's method on the height, from constant acceleration at the start's.
+        start = np.where(carried, pull - slope * speed, 1.0)
+        under = np.maximum(speed**2 + 2.0 * start * np.maximum(rise, 0.0), 0.0)
+        time = 2.0 * np.maximum(rise, 0.0) / np.maximum(speed + np.sqrt(under), 1e-9)
+        time = np.minimum(time, halt)
+        for _ in range(ROUNDS):
+            now = np.maximum(limit + (speed - limit) * np.exp(-slope * time), 1e-3)
+            time += (rise - _risen(limit, slope, speed, time)) / now
+            time = np.clip(time, 0.0, np.minimum(halt, LONGEST))
+        after = np.maximum(limit + (speed - limit) * np.exp(-slope * time), 0.0)
+        return np.where(carried, time, np.inf), np.where(carried, after, 0.0)
 
     def travel(self, change: Array, drive: Drive, speed: float) -> tuple[Array, Array]:
         """At full strength; a step down is made from rest to rest, one on a level by shifting."""
@@ -173,12 +201,14 @@ class ForceMotion:
                    ) -> tuple[Array, Array]:
         """Start speed that a rise in ``time`` needs, and its end speed, at full strength.
 
-        At the mean speed u = D / T the acceleration a is known: v1 = u − a T / 2, v2 = u + a T / 2.
+        With w = 1 − exp(−B T) the law gives v1 = A / B + (D − A T / B) B / w, v2 = A / B + (v1 −
+        A / B) (1 − w).
         """
-        mean = rise / np.maximum(time, 1e-12)
-        time = np.minimum(time, LONGEST)
-        pull = GRAVITY * (strength * np.maximum(1.0 - mean / self.capacities.speed, 0.0) - 1.0)
-        need, after = mean - pull * time / 2.0, mean + pull * time / 2.0
+        pull, slope = self._law(strength)
+        limit, time = pull / slope, np.minimum(np.maximum(time, 1e-9), LONGEST)
+        share = -np.expm1(-slope * time)
+        need = limit + (rise - limit * time) * slope / share
+        after = limit + (need - limit) * (1.0 - share)
         # Slower than from rest: wait first, as long as the contacts hold the body.
         _, from_rest = self._quickest(rise, strength, 0.0)
         waits = (need < 0.0) | (rise <= LEVEL)

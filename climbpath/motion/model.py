@@ -69,8 +69,8 @@ class Motion(Protocol):
 
     @property
     def durations(self) -> tuple[float, ...]:
-        """Classes of how long a move lasted, ascending from ``least_step``: limbs that land with
-        it had at least that long to travel. A move may take longer than it must to be of a class.
+        """Classes of how long a move lasted, ascending: limbs that land with it had at least that
+        long to travel. A move may take longer than it must to be of a class.
         """
         ...
 

@@ -98,14 +98,15 @@ def limb_state(
         quality[:, :2] = options.hand_quality[index[:, :2]]
         quality[:, 2:] = options.foot_quality[index[:, 2:]]
     quality = np.where(contacts >= 0, quality, np.where(contacts == FREE, 0.0, 1.0))
-    along = options.surface.to_surface(com)[:, 1]
+    top = float(options.surface.to_world(np.zeros(1), np.array([options.height]))[0, 1])
+    above = com[:, 1] - options.floor_level
     return LimbState(
         quality=quality,
         level=trunk_level(joints, points[:, :2]),
         knee=knee_flexion(joints),
         matched=(contacts[:, 0] >= 0) & (contacts[:, 0] == contacts[:, 1]),
         smear=contacts[:, 2:] == SMEAR,
-        height=along / options.height,
+        height=above / max(top - options.floor_level, 1e-6),
     )
 
 

@@ -148,7 +148,8 @@ class Builder:
 
     def risen_phase(self, time: Array) -> Ints:
         """The phase after a rise of ``time``: as after a move, if it lasted as long as one."""
-        return np.where(time + SAME_TIME >= self.durations[0], self.phase_of(time, False), READY)
+        long = time + SAME_TIME >= self.motion.least_step
+        return np.where(long, self.phase_of(time, False), READY)
 
     def settling(self) -> Arcs:
         """From just landed to ready, without time."""
@@ -179,13 +180,17 @@ class Builder:
         return np.where(number > 0, place, -1), number
 
     def _nearest(self, stance: Ints, like: Ints) -> Ints:
-        """Of a stance's samples at the level of sample ``like`` the one nearest to it in x, or -1.
-        """
+        """Of a stance's samples at the level of sample ``like`` the one nearest to it in x; its
+        highest where it does not come so high, else -1."""
         first, number = self._at_level(stance, self.stances.level[like])
         x = self.stances.com[:, 0]
         second = np.minimum(first + 1, len(x) - 1)
         other = np.abs(x[second] - x[like]) < np.abs(x[np.maximum(first, 0)] - x[like])
-        return np.where((number > 1) & other, second, first)
+        found = np.where((number > 1) & other, second, first)
+        # A stance that does not come so high is taken at its own highest sample.
+        highest = self.stances.first_sample[stance + 1] - 1
+        below = (number == 0) & (self.stances.level[highest] < self.stances.level[like])
+        return np.where(below, highest, found)
 
     def _same_level(self, limb: int) -> tuple[Ints, Ints]:
         """Samples of stances and the samples at the same level of what is left without limb."""

@@ -90,7 +90,8 @@ def _landings(
             level = builder.level_of(np.full(len(end), after))
             begun = np.asarray((bins[end] - drift) * FLIGHT_BIN, dtype=np.float64)
             off = mean_distance(begun, builder.off[end])
-            phase = builder.phase_of(np.zeros(len(end)), True)
+            # Feet that land with the hand were on their way no longer than the flight.
+            phase = builder.phase_of(time[good], False)
             found.append((origin[good], builder.code.node(end, level, hand, phase),
                           time[good], off, builder.event(hand, end)))
     return found

@@ -103,6 +103,8 @@ class Recoster:
             there = own[stances.level[own] == stances.level[second]]
             apart = np.abs(stances.com[there, 0] - stances.com[second, 0])
             at_end = strength[there[int(np.argmin(apart))]] if len(there) else strength[first]
+            if not len(there) and len(own) and stances.level[own[-1]] < stances.level[second]:
+                at_end = strength[own[-1]]
         engaged = stances.contacts[hub] != FREE
         drive = Drive(np.array([engaged[:2].sum()]), np.array([engaged[2:].sum()]),
                       strength[[first]], np.array([at_end]))

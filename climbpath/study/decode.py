@@ -53,6 +53,12 @@ def legs_of(climb: Climb, route: Route, start_us: int) -> list[Leg]:
     owner = stances.sample_stance[code.sample(np.array(begin))]
     landed: set[int] = set()
     for place, (tail, head, arc) in enumerate(zip(nodes[:-1], nodes[1:], route.arcs, strict=True)):
+        if landed and _goes_on(climb, tail, head):
+            here = int(code.sample(np.array(tail)))
+            legs.append(Leg(int(code.sample(np.array(begin))), here, begin_us, clock, flight,
+                            frozenset(landed), place))
+            begin, begin_us, flight, owner = tail, clock, False, stances.sample_stance[here]
+            landed.clear()
         clock += int(graph.time_us[arc])
         flight |= head >= code.plain
         event = int(graph.event[arc])
@@ -72,6 +78,18 @@ def legs_of(climb: Climb, route: Route, start_us: int) -> list[Leg]:
             owner = stances.sample_stance[code.sample(np.array(head))]
             landed.clear()
     return legs
+
+
+def _goes_on(climb: Climb, tail: int, head: int) -> bool:
+    """Whether what follows a landing at once is no landing with it: a flight, or a rise on which
+    limbs under way go on."""
+    code, level = climb.search.code, climb.search.stances.level
+    if tail >= code.plain or tail % code.phases < LANDED:
+        return False
+    if head >= code.plain:
+        return True
+    first, second = (int(code.sample(np.array(node))) for node in (tail, head))
+    return head % code.phases >= LANDED and bool(level[first] != level[second])
 
 
 def plan_of(climb: Climb, route: Route, rank: int, track: Track | None = None) -> Plan:

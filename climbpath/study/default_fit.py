@@ -10,7 +10,7 @@ of each sex (mean stature, and one standard deviation to either side). The searc
 evolution: change some parameters at random, keep what is better, with steps that grow on success
 and shrink on failure. Geometry does not depend on capacities and is found once a process.
 
-A run takes about half an hour on two cores. It prints its report; the values in
+A run takes about a quarter of an hour on two cores. It prints its report; the values in
 ``motion/tables/capacity_defaults.toml`` are its result, rounded, and the report stands beside them.
 """
 
@@ -59,19 +59,20 @@ class Parameter:
 
 PARAMETERS = (
     Parameter("hand_pull_bw", 0.75, 0.4, 1.6),
-    Parameter("press_share", 0.25, 0.08, 0.9),
-    Parameter("foot_push_bw", 3.0, 1.2, 5.0),
-    Parameter("speed_m_s", 10.0, 6.0, 30.0),
-    Parameter("turn_rad_s2", 30.0, 6.0, 45.0),
-    Parameter("reach_speed_m_s", 10.0, 5.0, 16.0),
+    Parameter("press_share", 0.35, 0.08, 0.9),
+    Parameter("foot_push_bw", 3.4, 1.2, 5.0),
+    Parameter("speed_m_s", 12.0, 6.0, 30.0),
+    Parameter("turn_rad_s2", 36.0, 6.0, 45.0),
+    Parameter("reach_speed_m_s", 14.0, 5.0, 16.0),
     Parameter("settle_s", 0.03, 0.01, 0.10),
 )
-"""Men's values begin near those of a first coarse search; the bounds are choices of the model."""
+"""Values begin near those of a first, coarser search on the men; the bounds are choices of the
+model."""
 
 LAYOUTS = 3
-ROUNDS = 45
-SPREAD = 0.2
-"""Random foot layouts, evaluations of a fit, and first step, as share of a parameter."""
+ROUNDS = {"male": 60, "female": 25}
+SPREAD = 0.3
+"""Random foot layouts, evaluations of a fit on either sex, first step as share of a parameter."""
 
 CONTESTED_PLACES = [HAND_HOLDS.index(hold) for hold in CONTESTED]
 YEARS = tuple(sorted({runs.year for runs in observed_runs()}))
@@ -175,7 +176,7 @@ def fitted(sex: str, pool: Executor, seed: int) -> list[tuple[dict[str, float], 
     best = np.log([p.first for p in PARAMETERS])
     spread, least = SPREAD, np.inf
     tried = []
-    for number in range(ROUNDS):
+    for number in range(ROUNDS[sex]):
         change = spread * rng.standard_normal(len(best)) * (rng.random(len(best)) < 0.6)
         at = np.clip(best + change * (number > 0), low, high)
         values = {p.name: float(np.exp(x)) for p, x in zip(PARAMETERS, at, strict=True)}

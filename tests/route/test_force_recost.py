@@ -52,10 +52,10 @@ WALLS: dict[str, Wall] = {
     "slab, then overhang": sloped(3, -10.0, 12.0),
     "overhang, then slab": sloped(4, 8.0, -12.0),
 }
-CASES = (("overhang", MAN), ("slab", WOMAN), ("slab, then overhang", MAN),
-         ("overhang, then slab", WOMAN))
+CASES = (("overhang", MAN), ("slab, then overhang", MAN), ("slab", WOMAN))
 MORE = (("overhang", WOMAN), ("other overhang", MAN), ("other overhang", WOMAN), ("ladder", MAN),
-        ("slab", MAN), ("slab, then overhang", WOMAN), ("overhang, then slab", MAN))
+        ("slab", MAN), ("slab, then overhang", WOMAN), ("overhang, then slab", MAN),
+        ("overhang, then slab", WOMAN))
 AIMS = ("time", "straight", "narrow")
 
 
@@ -72,7 +72,7 @@ def climb(name: str, body: Body, flights: bool = True) -> Climb:
     somebody = person(body)
     motion = ForceMotion(
         capacities_of(somebody), least_step=0.14, least_carried=0.06, repeat_wait=0.15,
-        hand_start=0.10, foot_start=0.06, settle_poor=0.10, side_speed=3.0, longer=(0.25, 0.40),
+        hand_start=0.10, foot_start=0.06, settle_poor=0.10, side_speed=3.0, longer=(0.14, 0.25, 0.40),
         hand_apart=0.22, pair=0.10,
     )
     return prepare(WALLS[name], somebody, Conditions(flights=flights), motion, STEP)
@@ -237,7 +237,7 @@ def test_flights_are_ballistic(name: str, body: Body) -> None:
 def test_every_limb_has_the_time_that_it_needs_to_land(flights: bool) -> None:
     """From its release, whatever credit the model gives for moves before."""
     late = []
-    for name, body in CASES[::2]:
+    for name, body in CASES[:2]:
         again = again_of(name, body, flights)
         for route in routes(name, body, flights):
             late += [(name, landed) for landed in landings(route.nodes, again)
@@ -248,7 +248,7 @@ def test_every_limb_has_the_time_that_it_needs_to_land(flights: bool) -> None:
 @WITH_FLIGHTS
 def test_hands_land_apart(flights: bool) -> None:
     close = []
-    for name, body in CASES[::2]:
+    for name, body in CASES[:2]:
         again = again_of(name, body, flights)
         for route in routes(name, body, flights):
             clock = [landed.at for landed in landings(route.nodes, again) if landed.limb < 2]

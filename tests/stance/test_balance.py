@@ -32,6 +32,7 @@ from tests.walls_made import athlete, small_wall
 Array = NDArray[np.float64]
 Ints = NDArray[np.int64]
 
+STEP = 0.1
 LANE = Path(__file__).parents[2] / "walls" / "published_lane.toml"
 
 
@@ -88,7 +89,7 @@ def test_the_best_x_moves_and_turns_with_the_contacts() -> None:
 def ground(seed: int, body: Body = MAN, turned: bool = False, balanced: bool = True) -> Ground:
     wall = small_wall(seed)
     return ground_of(mirror(wall) if turned else wall, athlete(*body), Conditions(),
-                     balanced=balanced)
+                     STEP, balanced)
 
 
 def kinds(made: Ground) -> tuple[Ints, Ints]:
@@ -229,7 +230,7 @@ def shares(wall: Wall, made: Ground, samples: Ints) -> Array:
 def test_samples_there_have_nearly_the_strength_of_the_best_x() -> None:
     """The figures of the docstring of ``climbpath.stance.balance``."""
     wall = read_wall(str(LANE))
-    made = ground_of(wall, with_capacity(MAN), Conditions())
+    made = ground_of(wall, with_capacity(MAN), Conditions(), STEP)
     first, second = kinds(made)
     owner = made.stances.sample_stance
     pads = np.flatnonzero(made.options.strike)
