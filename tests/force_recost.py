@@ -6,8 +6,8 @@ nodes are taken apart as the docstring of ``route/nodes.py`` says, loads come fr
 
 - strength: 1 over the load at rest of a sample's contacts, in body weights; a step is carried by
   the mean of the strengths of what stays, at its start and at the level where it ends;
-- a rise by D from v1 by v' = g (c (1 − v / V0) − 1), whose height after a time is known, the time by
-  halving; a shift across or out by d, from rest to rest with three tenths of c,
+- a rise by D from v1 goes by v' = g (c (1 − v / V0) − 1), whose height after a time is known in
+  closed form; its time is found by halving; a shift across or out by d, from rest to rest with three tenths of c,
   takes 2 √(d / (.3 g c)) and leaves √(1 − .3²) of c for the rise;
 - a step that takes T longer than it must starts at the speed that makes it take T, or is waited for
   at rest where the contacts hold the body at both ends;
@@ -315,7 +315,7 @@ class ForceRecoster:
         if tail.sample == head.sample:
             if head.speed > tail.speed or tail.last != head.last:
                 raise AssertionError(f"nothing happens, but {tail} becomes {head}")
-            return Arc("settle" if tail.phase else "shed", 0, 0)
+            return Arc("shed" if tail.phase == head.phase else "settle", 0, 0)
         if tail.stance == head.stance:
             return self.rise(tail, head)
         limb = next(k for k in range(4) if tail.contacts[k] != head.contacts[k])
@@ -339,12 +339,19 @@ class ForceRecoster:
         return mean_distance(self.off(tail), self.off(head))
 
     def rise(self, tail: Node, head: Node) -> Arc:
+        """The quickest rise, or one as long as a class of landings."""
         time, after = self.travel(tail, head)
         long = time + SAME_TIME >= self.figures.least_step
-        phase = self.phase(time, False) if long else 0
-        self.expect(tail.phase == 0 and head.phase == phase and head.speed == self.floor(after)
-                    and head.last == tail.last and head.level > tail.level, tail, head)
-        return self.cost("rise", time, self.between(tail, head))
+        ways = [(time, after, self.phase(time, False) if long else 0)]
+        for duration in self.durations:
+            need, after = self.unhurried(tail, head, duration)
+            if need <= tail.speed + 1e-9 and time < duration:
+                ways.append((duration, after, self.phase(duration, False)))
+        fits = [lasts for lasts, after, phase in ways
+                if phase == head.phase and self.floor(after) == head.speed]
+        self.expect(tail.phase == 0 and bool(fits) and head.last == tail.last
+                    and head.level > tail.level, tail, head)
+        return self.cost("rise", min(fits), self.between(tail, head))
 
     def release(self, tail: Node, head: Node, limb: int) -> Arc:
         shift = self.shift(tail, head)
@@ -380,8 +387,10 @@ class ForceRecoster:
             need, after = self.unhurried(tail, head, time)
             if need <= tail.speed + 1e-9:
                 ways.append((time, after))
-        fits = [time for time, after in ways
-                if self.floor(after) == head.speed and self.phase(time, limb < 2) == head.phase]
+        # A foot may leave the node one of a move of hands.
+        kept = {tail.phase} if self.of_hands(tail) and limb >= 2 else set()
+        fits = [time for time, after in ways if self.floor(after) == head.speed
+                and head.phase in {self.phase(time, limb < 2), *kept}]
         self.expect(bool(fits) and head.last == (limb if limb < 2 else tail.last), tail, head)
         return self.cost("move", min(fits), self.between(tail, head), limb, reach, carried)
 

@@ -146,6 +146,11 @@ class Builder:
         kind = np.searchsorted(self.durations, time + SAME_TIME, side="right") - 1
         return LANDED + np.maximum(kind, 0)
 
+    def flown_phase(self, number: int) -> Ints:
+        """The landed phase of hands after flights."""
+        of_hands = self.motion.hand_apart is not None
+        return np.full(number, self.code.phases - 2 if of_hands else LANDED)
+
     def risen_phase(self, time: Array) -> Ints:
         """The phase after a rise of ``time``: as after a move, if it lasted as long as one."""
         long = time + SAME_TIME >= self.motion.least_step

@@ -90,8 +90,7 @@ def _landings(
             level = builder.level_of(np.full(len(end), after))
             begun = np.asarray((bins[end] - drift) * FLIGHT_BIN, dtype=np.float64)
             off = mean_distance(begun, builder.off[end])
-            # Feet that land with the hand were on their way no longer than the flight.
-            phase = builder.phase_of(time[good], False)
+            phase = builder.flown_phase(len(end))
             found.append((origin[good], builder.code.node(end, level, hand, phase),
                           time[good], off, builder.event(hand, end)))
     return found

@@ -44,7 +44,8 @@ def landing_classes(motion: Motion) -> list[tuple[float, bool]]:
     """
     classes = [(float(duration), False) for duration in motion.durations]
     if motion.hand_apart is not None:
-        classes.append((float(motion.hand_apart), True))
+        # After a flight feet have been under way no longer than it lasted: nothing is credited.
+        classes += [(0.0, True), (float(motion.hand_apart), True)]
     return classes
 
 

@@ -58,12 +58,12 @@ class Parameter:
 
 
 PARAMETERS = (
-    Parameter("hand_pull_bw", 0.75, 0.4, 1.6),
-    Parameter("press_share", 0.35, 0.08, 0.9),
-    Parameter("foot_push_bw", 3.4, 1.2, 5.0),
-    Parameter("speed_m_s", 12.0, 6.0, 30.0),
+    Parameter("hand_pull_bw", 0.72, 0.4, 1.6),
+    Parameter("press_share", 0.3, 0.08, 0.9),
+    Parameter("foot_push_bw", 3.5, 1.2, 5.0),
+    Parameter("speed_m_s", 14.0, 6.0, 30.0),
     Parameter("turn_rad_s2", 36.0, 6.0, 45.0),
-    Parameter("reach_speed_m_s", 14.0, 5.0, 16.0),
+    Parameter("reach_speed_m_s", 13.0, 5.0, 16.0),
     Parameter("settle_s", 0.03, 0.01, 0.10),
 )
 """Values begin near those of a first, coarser search on the men; the bounds are choices of the

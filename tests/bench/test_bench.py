@@ -17,7 +17,7 @@ import numpy as np
 import pytest
 from numpy.typing import NDArray
 
-from climbpath.motion.model import PacedMotion
+from climbpath.motion.model import Motion, PacedMotion
 from climbpath.posture.linkage import linkage_of
 from climbpath.posture.newton import Postures
 from climbpath.posture.samples import Lattice, com_samples
@@ -26,7 +26,7 @@ from climbpath.route.build import build_graph
 from climbpath.stance.enumerate import Allowed, all_stances, batch_of
 from climbpath.stance.options import contact_options
 from climbpath.stance.stances import stance_set
-from climbpath.study.climb import LATTICE_STEP, Conditions
+from climbpath.study.climb import LATTICE_STEP, Conditions, motion_of
 from climbpath.study.plan import PlanRequest, plan
 from climbpath.wall import read_wall, write_wall
 from climbpath.wall.model import Wall
@@ -74,16 +74,24 @@ def test_posture_per_stance() -> None:
 
 
 def test_arcs_per_second() -> None:
-    """Building the search graph of the 31-hold lane, stances given."""
+    """Building the search graph of the 31-hold lane, stances given: by pacing, and by forces."""
     wall = lane(31)
     options, linkage = contact_options(wall), linkage_of(athlete())
-    stances = stance_set(options, linkage, Allowed(), wall.line_x, Lattice(1.6, LATTICE_STEP))
-    begin = time.perf_counter()
-    search = build_graph(options, linkage, stances, PacedMotion(), wall.line_x)
-    seconds = time.perf_counter() - begin
-    print(f"\ngraph, {stances.stances} stances, {stances.samples} samples: {search.graph.nodes} "
-          f"nodes, {search.graph.arcs} arcs in {seconds:.2f} s, "
-          f"{search.graph.arcs / seconds / 1e6:.2f} million arcs per second")
+    lattice = Lattice(1.6, LATTICE_STEP)
+    models: tuple[tuple[str, Motion], ...] = (
+        ("pacing", PacedMotion()), ("forces", motion_of(athlete())))
+    for name, motion in models:
+        stances = stance_set(options, linkage, Allowed(), wall.line_x, lattice,
+                             balanced=motion.balanced)
+        begin = time.perf_counter()
+        strength = motion.strengths(wall, options, linkage, stances)
+        forces = time.perf_counter() - begin
+        begin = time.perf_counter()
+        search = build_graph(options, linkage, stances, motion, wall.line_x, strength)
+        seconds = time.perf_counter() - begin
+        print(f"\ngraph by {name}, {stances.stances} stances, {stances.samples} samples (strengths "
+              f"in {forces:.2f} s): {search.graph.nodes} nodes, {search.graph.arcs} arcs in "
+              f"{seconds:.2f} s, {search.graph.arcs / seconds / 1e6:.2f} million arcs per second")
 
 
 def one_case(path: str) -> None:
@@ -150,7 +158,7 @@ def test_against_the_plain_way() -> None:
     wall = small_wall(0, holds=5, height=3.5)
     request = PlanRequest(conditions=Conditions(smears=False))
     begin = time.perf_counter()
-    result = plan(wall, athlete(), request)
+    result = plan(wall, athlete(), request, PacedMotion())
     program = time.perf_counter() - begin
     begin = time.perf_counter()
     plain = PlainWay(wall, athlete(), smears=False)

@@ -149,7 +149,7 @@ def test_conditions_are_honoured(plan: Any, wall: Path) -> None:
 
 def test_the_opening_is_honoured(plan: Any, wall: Path, tmp_path: Path) -> None:
     opening = tmp_path / "opening.csv"
-    opening.write_text("step,limb,hold\n0,LH,1\n0,RH,1\n1,RH,4\n2,RH,5\n")
+    opening.write_text("step,limb,hold\n0,LH,1\n0,RH,1\n1,RH,2\n2,LH,3\n")
     document = document_of(plan(wall, "--json", "-", "--opening", opening))
     landed = [
         (limb, step["contacts"][limb])
@@ -158,7 +158,7 @@ def test_the_opening_is_honoured(plan: Any, wall: Path, tmp_path: Path) -> None:
         if limb in step["moved"] and step["contacts"][limb] != "free"
     ]
     assert contacts_of(document, "RH")[0] == contacts_of(document, "LH")[0] == "1"
-    assert landed[:2] == [("RH", "4"), ("RH", "5")]
+    assert landed[:2] == [("RH", "2"), ("LH", "3")]
 
 
 def test_every_option_reaches_the_search(

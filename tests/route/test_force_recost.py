@@ -72,8 +72,8 @@ def climb(name: str, body: Body, flights: bool = True) -> Climb:
     somebody = person(body)
     motion = ForceMotion(
         capacities_of(somebody), least_step=0.14, least_carried=0.06, repeat_wait=0.15,
-        hand_start=0.10, foot_start=0.06, settle_poor=0.10, side_speed=3.0, longer=(0.14, 0.25, 0.40),
-        hand_apart=0.22, pair=0.10,
+        hand_start=0.10, foot_start=0.06, settle_poor=0.10, side_speed=3.0,
+        longer=(0.14, 0.25, 0.40), hand_apart=0.22, pair=0.10,
     )
     return prepare(WALLS[name], somebody, Conditions(flights=flights), motion, STEP)
 
@@ -88,14 +88,7 @@ def routes(name: str, body: Body, flights: bool = True) -> tuple[Route, ...]:
 
 SOME = pytest.mark.parametrize(
     ("name", "body"), [*CASES, *(pytest.param(*case, marks=pytest.mark.slow) for case in MORE)])
-FLYING = pytest.param(True, id="flights", marks=pytest.mark.xfail(
-    reason="limbs that let go at a take-off count as under way for as long as hands are apart when "
-    "the flight lands, and a foot that lands after a hand makes the phase of hands be forgotten, "
-    "so that the other hand may land at once; ends when landings of flights are a class of their "
-    "own and feet keep the phase of hands",
-    raises=AssertionError, strict=True,
-))
-WITH_FLIGHTS = pytest.mark.parametrize("flights", [pytest.param(False, id="no flights"), FLYING])
+WITH_FLIGHTS = pytest.mark.parametrize("flights", [False, True], ids=["no flights", "flights"])
 
 
 @lru_cache(maxsize=32)
@@ -257,10 +250,14 @@ def test_hands_land_apart(flights: bool) -> None:
     assert close == []
 
 
-@pytest.mark.xfail(
-    reason="a foot that lands with a hand, or soon after one, leaves a node of a move of feet",
+FORGOTTEN = pytest.mark.xfail(
+    reason="a foot that lands with a hand, or soon after one, leaves a node of a move of feet, and "
+    "a flight leaves one of a move as long as it was, so that the other hand may land at once",
     raises=AssertionError,
 )
+
+
+@FORGOTTEN
 def test_the_phase_of_hands_lasts_until_the_other_hand_may_land() -> None:
     """Nodes of the last phase say that a hand has just landed; a foot that lands from there sooner
     than hands may follow one another does not make it forgotten."""
@@ -274,6 +271,42 @@ def test_the_phase_of_hands_lasts_until_the_other_hand_may_land() -> None:
     after = plain[(code.phase(tail[plain]) >= hands) & (graph.time_us[plain] < apart - 1)]
     assert len(after) > 1000
     assert (code.phase(head[after]) >= hands).all()
+
+
+@FORGOTTEN
+def test_no_hand_lands_at_once_after_the_hand_of_a_flight() -> None:
+    """From where a flight has landed a hand has nearly ``hand_apart`` to go."""
+    ready = climb("overhang", MAN)
+    graph, code, holds = ready.search.graph, ready.search.code, ready.options.holds
+    tail = np.repeat(np.arange(graph.nodes), np.diff(graph.indptr))
+    landed = np.unique(graph.head[(tail >= code.plain)])
+    hand = (graph.event >= 0) & (graph.event // (holds + 2) < 2)
+    next_hand = np.flatnonzero(hand & np.isin(tail, landed))
+    apart = round(again_of("overhang", MAN).figures.hand_apart * 1e6)
+    assert len(landed) > 100
+    # From other ways the same nodes are of moves that began earlier: none is exempt.
+    assert (graph.time_us[next_hand] >= apart - 1).all()
+
+
+@pytest.mark.xfail(
+    reason="speed is shed in ready nodes only, but steps start from the slowest speed that does: a "
+    "body that is faster has no step with limbs under way at all; ends when it is shed in all",
+    raises=AssertionError,
+)
+def test_speed_can_be_shed_in_every_phase() -> None:
+    """A faster node is never worse than a slower one, whatever its phase."""
+    ready = climb("overhang", MAN)
+    graph, code = ready.search.graph, ready.search.code
+    sample = np.arange(0, ready.search.stances.samples, 17)
+    for phase in range(code.phases):
+        for speed in range(1, code.speeds):
+            for last in range(2):
+                fast = code.node(sample, speed, last, phase)
+                slow = code.node(sample, speed - 1, last, phase)
+                for node, wanted in zip(fast, slow, strict=True):
+                    row = slice(graph.indptr[node], graph.indptr[node + 1])
+                    free = graph.head[row][graph.time_us[row] == 0]
+                    assert wanted in free, (phase, speed)
 
 
 @SOME
