@@ -7,8 +7,8 @@ nodes are taken apart as the docstring of ``route/nodes.py`` says, loads come fr
 - strength: 1 over the load at rest of a sample's contacts, in body weights; a step is carried by
   the mean of the strengths of what stays, at its start and at the level where it ends;
 - a rise by D from v1 goes by v' = g (c (1 − v / V0) − 1), whose height after a time is known in
-  closed form; its time is found by halving; a shift across or out by d, from rest to rest with three tenths of c,
-  takes 2 √(d / (.3 g c)) and leaves √(1 − .3²) of c for the rise;
+  closed form; its time is found by halving; a shift across or out by d, from rest to rest with
+  three tenths of c, takes 2 √(d / (.3 g c)) and leaves √(1 − .3²) of c for the rise;
 - a step that takes T longer than it must starts at the speed that makes it take T, or is waited for
   at rest where the contacts hold the body at both ends;
 - a step down is fallen and stopped, from rest to rest; a release, and a landing with a move, are a
@@ -112,7 +112,8 @@ class ForceRecoster:
         self.stances = climb.search.stances
         self.speeds = self.figures.speeds
         self.durations = self.figures.durations
-        self.classes = (*self.durations, self.figures.hand_apart)
+        # The last two are of hands: after a flight, which credits nothing, and after a move.
+        self.classes = (*self.durations, 0.0, self.figures.hand_apart)
         self.phases = 1 + len(self.classes)
         self.per_sample = len(self.speeds) * LASTS * self.phases
         self.plain = self.stances.samples * self.per_sample
@@ -422,7 +423,7 @@ class ForceRecoster:
         reach, carried = self.reach(head, hand), self.classes[left.phase - 1]
         needed = max(reach, self.figures.hand_apart)
         self.expect(needed - carried <= time + 1e-9 and self.floor(after) == head.speed
-                    and rise > 0.0, left, head)
+                    and rise > 0.0 and head.phase == self.phases - 2, left, head)
         begun = round(self.off(left) / FLIGHT_BIN) * FLIGHT_BIN
         return self.cost("flight", time, mean_distance(begun, self.off(head)), hand, reach,
                          carried)
@@ -433,7 +434,7 @@ class ForceRecoster:
 
     def of_hands(self, node: Node) -> bool:
         """Whether a hand has just landed."""
-        return node.phase == self.phases - 1
+        return node.phase >= self.phases - 2
 
     def phase(self, time: float, hand: bool) -> int:
         if hand:

@@ -101,7 +101,7 @@ class ForceMotion:
     hand_start: float = 0.10
     foot_start: float = 0.06
     settle_poor: float = 0.10
-    side_speed: float = 3.0
+    side_speed: float = 8.0
     longer: tuple[float, ...] = (0.14, 0.25, 0.40)
     speeds: tuple[float, ...] = SPEEDS
     stronger: float = 1.0

@@ -28,11 +28,13 @@ from climbpath.body import Athlete, make_athlete
 from climbpath.motion.capacity import capacities_of
 from climbpath.motion.force import ForceMotion
 from climbpath.study.climb import Conditions, Ground, climb_on, ground_of
+from climbpath.study.decode import plan_of
 from climbpath.study.evidence import worker_pool
 from climbpath.study.evidence_results import FINALISTS, PopulationOf
 from climbpath.study.foot_layouts import with_random_feet
 from climbpath.study.observed import CONTESTED, observed_runs, pooled
 from climbpath.study.plan import PlanRequest, best_route, hand_holds_of
+from climbpath.study.polish import polish
 from climbpath.study.published_lane import HAND_HOLDS, published_lane
 from climbpath.study.scores import correlation, excess, on_right_side
 from climbpath.wall import Wall
@@ -58,20 +60,20 @@ class Parameter:
 
 
 PARAMETERS = (
-    Parameter("hand_pull_bw", 0.72, 0.4, 1.6),
-    Parameter("press_share", 0.3, 0.08, 0.9),
-    Parameter("foot_push_bw", 3.5, 1.2, 5.0),
-    Parameter("speed_m_s", 14.0, 6.0, 30.0),
-    Parameter("turn_rad_s2", 36.0, 6.0, 45.0),
-    Parameter("reach_speed_m_s", 13.0, 5.0, 16.0),
-    Parameter("settle_s", 0.03, 0.01, 0.10),
+    Parameter("hand_pull_bw", 0.64, 0.4, 1.6),
+    Parameter("press_share", 0.35, 0.08, 0.9),
+    Parameter("foot_push_bw", 3.9, 1.2, 5.0),
+    Parameter("speed_m_s", 18.0, 6.0, 30.0),
+    Parameter("turn_rad_s2", 38.0, 6.0, 45.0),
+    Parameter("reach_speed_m_s", 15.5, 5.0, 16.0),
+    Parameter("settle_s", 0.045, 0.01, 0.10),
 )
 """Values begin near those of a first, coarser search on the men; the bounds are choices of the
 model."""
 
 LAYOUTS = 3
-ROUNDS = {"male": 60, "female": 25}
-SPREAD = 0.3
+ROUNDS = {"male": 22, "female": 8}
+SPREAD = 0.15
 """Random foot layouts, evaluations of a fit on either sex, first step as share of a parameter."""
 
 CONTESTED_PLACES = [HAND_HOLDS.index(hold) for hold in CONTESTED]
@@ -106,7 +108,8 @@ def body_of(population: PopulationOf, place: int) -> Athlete:
 
 
 def climbed(job: Job) -> tuple[float, tuple[str, ...]] | None:
-    """Best time and hand holds of one body on one layout, None without a way up."""
+    """Time, polished, and hand holds of the best way of one body on one layout; None without a way.
+    """
     sex, place, layout, capacity = job
     key = sex, place, layout
     if key not in _grounds:
@@ -121,7 +124,8 @@ def climbed(job: Job) -> tuple[float, tuple[str, ...]] | None:
     if best is None:
         return None
     names = tuple(climb.options.name(k) for k in sorted(hand_holds_of(climb, best.route)))
-    return best.cost / 1e6, names
+    track = polish(climb, best.route).track
+    return plan_of(climb, best.route, 1, track).time_s, names
 
 
 def capacity_of(values: Mapping[str, float], ratio: float = 1.0) -> dict[str, float]:

