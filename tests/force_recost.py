@@ -344,9 +344,9 @@ class ForceRecoster:
         time, after = self.travel(tail, head)
         long = time + SAME_TIME >= self.figures.least_step
         ways = [(time, after, self.phase(time, False) if long else 0)]
-        for duration in self.durations:
+        for duration in (d for d in self.durations if d > time):
             need, after = self.unhurried(tail, head, duration)
-            if need <= tail.speed + 1e-9 and time < duration:
+            if need <= tail.speed + 1e-9:
                 ways.append((duration, after, self.phase(duration, False)))
         fits = [lasts for lasts, after, phase in ways
                 if phase == head.phase and self.floor(after) == head.speed]

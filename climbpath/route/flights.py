@@ -19,8 +19,8 @@ Ints = NDArray[np.int64]
 
 FLIGHT_BIN = 0.097
 FLIGHT_SIDE = 0.35
-"""Flights are sorted by take-off x in bins of this width, and drift sideways by at most that, m. The
-width is no round one, so that bodies below holds at round places do not lie on the edge of a bin."""
+"""Flights are sorted by take-off x in bins of this width, and drift sideways by at most that, m.
+The width is no round one: bodies below holds at round places do not lie on the edge of a bin."""
 
 Landings = tuple[Ints, Ints, Array, Array, Ints]
 

@@ -2,10 +2,10 @@
 the phase.
 
 Node = ((sample * speeds + speed) * 2 + last) * phases + phase. ``speed`` is the number of a speed
-level. ``last`` is 0 after the left hand and 1 after the right; a climb may begin in either, since the
-hand that moves first has nothing to wait for. Phase 0 is READY: the next move may begin, and limbs may let go. Phases from LANDED on: a
-move has just ended here, of the first, second, … class, and limbs that were free may land with it
-or go on from it. Classes tell how long the move lasted, and the last one may be that of hands.
+level. ``last`` is 0 after the left hand and 1 after the right; a climb may begin in either, since
+the hand that moves first has nothing to wait for. Phase 0 is READY: the next move may begin, and
+limbs may let go. Phases from LANDED on: a move has just ended here, and limbs that were free may
+land with it or go on from it. Their classes (``measures.landing_classes``) tell how long it lasted.
 Flight nodes follow after all of these.
 """
 

@@ -73,12 +73,13 @@ class Parameter:
 
 
 PARAMETERS = (
-    # Prior: 1.5 ± .34 body weights among 82 men (the source of the default), and some more.
+    # Prior: the pull-ups of 82 men differ by ± .34 of 1.5 body weights (Munoz-Lopez et al. 2017,
+    # abstract), and some more.
     Parameter("hand_pull_bw", "the pull of the hands", 0.2, 2.0, 0.3, along=("hand_press_bw",)),
-    Parameter("foot_push_bw", "the push of the feet", 0.6, 4.0, 0.3),
-    Parameter("hand_speed_m_s", "the speed of the limbs", 2.0, 15.0, 0.3,
+    Parameter("foot_push_bw", "the push of the feet", 0.6, 6.0, 0.3),
+    Parameter("hand_speed_m_s", "the speed of the limbs", 4.0, 40.0, 0.3,
               along=("foot_speed_m_s",)),
-    Parameter("reach_speed_m_s", "the speed of reaching", 2.0, 12.0, 0.3),
+    Parameter("reach_speed_m_s", "the speed of reaching", 2.0, 30.0, 0.3),
     Parameter("settle_s", "the time to settle on a hold", 0.0, 0.25, 0.5),
     Parameter("reaction_s", "the reaction to the signal", 0.10, 0.50, 0.25),
 )

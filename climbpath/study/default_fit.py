@@ -5,13 +5,14 @@ published lane use its hand holds as often, and take as long, as observed finals
 sex is then predicted with strengths multiplied by one published ratio and nothing else, and judged:
 what was fitted is never used to judge. Both ways round, and with each year left out in turn.
 
-The lane's foot holds are unknown: none, and a few random layouts, are climbed alike, by three bodies
-of each sex (mean stature, and one standard deviation to either side). The search is a simple
+The lane's foot holds are unknown: none, and a few random layouts, are climbed alike, by three
+bodies of each sex (mean stature, and one standard deviation to either side). The search is a simple
 evolution: change some parameters at random, keep what is better, with steps that grow on success
 and shrink on failure. Geometry does not depend on capacities and is found once a process.
 
 A run takes about a quarter of an hour on two cores. It prints its report; the values in
-``motion/tables/capacity_defaults.toml`` are its result, rounded, and the report stands beside them.
+``motion/tables/capacity_defaults.toml`` are its result, rounded; ``motion/capacity_fit.txt`` is the
+report.
 """
 
 from __future__ import annotations
