@@ -212,8 +212,8 @@ def test_area_is_that_of_the_path(wall: Wall) -> None:
 
 
 @pytest.mark.xfail(
-    reason="the lattice way itself sways by 100 mm, see the straight line of ladders in test_facts; "
-    "ends with that", raises=AssertionError,
+    reason="the lattice way itself sways by 100 mm, as that of test_facts does; ends with it",
+    raises=AssertionError,
 )
 def test_ladder_gives_a_straight_path() -> None:
     after = plans(ladder(4))[1]
