@@ -51,7 +51,7 @@ def command(
     from datetime import date
 
     from climbpath.body import read_athlete
-    from climbpath.cli.plan import _chosen_lane
+    from climbpath.cli.plan import chosen_lane
     from climbpath.cli.progress import Progress
     from climbpath.study.calibrate import CalibrateRequest, calibrate
     from climbpath.study.sequence import read_sequences
@@ -61,7 +61,7 @@ def command(
         raise UsageError("--json: expected a name, found an empty text")
     target = _target(athlete_file, out)
     athlete = read_athlete(athlete_file)
-    wall = _chosen_lane(read_wall(wall_file), wall_file, lane)
+    wall = chosen_lane(read_wall(wall_file), wall_file, lane)
     runs = read_sequences(runs_file)
     request = CalibrateRequest(draws=bootstrap, seed=seed, file=runs_file)
     with Progress() as progress:

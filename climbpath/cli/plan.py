@@ -90,7 +90,7 @@ def command(
     _check_options(options, json_target, out)
     hands = _hands(options["hand"])
     athlete = resolve_athlete(**{key: options[key] for key in BODY_KEYS})
-    wall = _chosen_lane(read_wall(wall_file), wall_file, options["lane"])
+    wall = chosen_lane(read_wall(wall_file), wall_file, options["lane"])
     opening = None
     if options["opening"] is not None:
         opening = _opening(options["opening"], wall)
@@ -131,7 +131,7 @@ def _hands(texts: tuple[str, ...]) -> tuple[tuple[str, str], ...]:
     return tuple(dict.fromkeys((limb, hold_id) for limb, _, hold_id in parts))
 
 
-def _chosen_lane(wall: Wall, file: str, lane: str | None) -> Wall:
+def chosen_lane(wall: Wall, file: str, lane: str | None) -> Wall:
     """The wall as it is climbed; UsageError for a lane it has not, or where one must be named."""
     names = ", ".join(one.id for one in wall.lanes) or "none"
     if lane is not None:

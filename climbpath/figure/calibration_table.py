@@ -5,7 +5,7 @@ from __future__ import annotations
 from collections.abc import Sequence
 
 from climbpath.figure.names import padded, printable
-from climbpath.figure.table import _bullet, number
+from climbpath.figure.table import bullet, number
 from climbpath.study.calibrate import Calibration
 from climbpath.study.prediction_errors import Errors
 
@@ -32,7 +32,7 @@ def calibration_table(result: Calibration) -> str:
         ("Cautions", result.cautions),
     ):
         if texts:
-            blocks.append([heading, *(line for text in texts for line in _bullet(text))])
+            blocks.append([heading, *(line for text in texts for line in bullet(text))])
     return "\n\n".join("\n".join(line.rstrip() for line in lines) for lines in blocks) + "\n"
 
 

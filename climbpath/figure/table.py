@@ -43,7 +43,7 @@ def plan_table(result: PlanResult) -> str:
         blocks.append(_trade_off_lines(result.trade_off))
     if result.cautions:
         blocks.append(
-            ["Cautions", *(line for text in result.cautions for line in _bullet(text))]
+            ["Cautions", *(line for text in result.cautions for line in bullet(text))]
         )
     return "\n\n".join("\n".join(line.rstrip() for line in lines) for lines in blocks) + "\n"
 
@@ -217,7 +217,7 @@ def why_not_lines(why_not: WhyNot) -> list[str]:
     return [part for line in lines for part in _folded(line, "  ")]
 
 
-def _bullet(text: str) -> list[str]:
+def bullet(text: str) -> list[str]:
     return _folded(f"- {printable(text, 400)}", "  ")
 
 

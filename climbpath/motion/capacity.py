@@ -105,7 +105,7 @@ class LimbState:
 
 
 @cache
-def _defaults(sex: str) -> Mapping[str, float]:
+def capacity_defaults(sex: str) -> Mapping[str, float]:
     """Default values by key."""
     path = files("climbpath.motion") / "tables" / "capacity_defaults.toml"
     tables: dict[str, Any] = tomllib.loads(path.read_text(encoding="utf-8"))
@@ -139,7 +139,7 @@ def capacities_of(athlete: Athlete) -> Capacities:
     problems = _problems(given)
     if problems:
         raise DataError(problems)
-    values = {**_defaults(athlete.sex), **given}
+    values = {**capacity_defaults(athlete.sex), **given}
 
     def sides(name: str) -> Array:
         both = values[f"{name}_bw"]

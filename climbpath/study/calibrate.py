@@ -16,8 +16,7 @@ from numpy.typing import NDArray
 
 from climbpath.body import Athlete, growth_caution
 from climbpath.errors import DataError, Problem, UsageError
-from climbpath.motion.capacity import SIDED, capacities_of
-from climbpath.motion.capacity import _defaults as capacity_defaults
+from climbpath.motion.capacity import SIDED, capacities_of, capacity_defaults
 from climbpath.study.cautions import cautions_for
 from climbpath.study.fitting import (
     FEWEST_TO_RESAMPLE,

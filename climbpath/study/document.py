@@ -48,7 +48,7 @@ def plan_document(result: PlanResult) -> dict[str, Any]:
         "cautions": [str(text) for text in result.cautions],
         "plans": [_plan(plan) for plan in result.plans],
         "trade_off": [
-            [_time(time), _area(area), _length(excursion)]
+            [rounded_time(time), _area(area), _length(excursion)]
             for time, area, excursion in result.trade_off
         ],
     }
@@ -71,42 +71,44 @@ def _plan(plan: Plan) -> dict[str, Any]:
     interval = plan.time_interval_s
     return {
         "rank": int(plan.rank),
-        "time_s": _time(plan.time_s),
-        "lattice_time_s": _time(plan.lattice_time_s),
-        "expected_time_s": _time(plan.expected_time_s),
-        "chance_clean": _share(plan.chance_clean),
-        "time_interval_s": None if interval is None else [_time(value) for value in interval],
-        "lattice_error_s": _time(plan.lattice_error_s),
-        "pad_off_s": _time(plan.pad_off_s),
+        "time_s": rounded_time(plan.time_s),
+        "lattice_time_s": rounded_time(plan.lattice_time_s),
+        "expected_time_s": rounded_time(plan.expected_time_s),
+        "chance_clean": rounded_share(plan.chance_clean),
+        "time_interval_s": (
+            None if interval is None else [rounded_time(value) for value in interval]
+        ),
+        "lattice_error_s": rounded_time(plan.lattice_error_s),
+        "pad_off_s": rounded_time(plan.pad_off_s),
         "lateral_area_mm_s": _area(plan.lateral_area_mm_s),
         "lateral_mean_mm": _length(plan.lateral_mean_mm),
         "lateral_max_mm": _length(plan.lateral_max_mm),
         "sideways_mm": _length(plan.sideways_mm),
-        "path_ratio": _share(plan.path_ratio),
+        "path_ratio": rounded_share(plan.path_ratio),
         "hand_moves": int(plan.hand_moves),
         "hand_holds": [str(hold) for hold in plan.hand_holds],
         "margin_min_mm": _length(plan.margin_min_mm),
-        "load_max": _share(plan.load_max),
+        "load_max": rounded_share(plan.load_max),
         "steps": [_step(step) for step in plan.steps],
-        "com_path_mm": [[_time(time), *_point(place)] for time, *place in plan.com_path_mm],
+        "com_path_mm": [[rounded_time(time), *_point(place)] for time, *place in plan.com_path_mm],
     }
 
 
 def _step(step: PlanStep) -> dict[str, Any]:
     return {
         "step": int(step.step),
-        "time_s": _time(step.time_s),
+        "time_s": rounded_time(step.time_s),
         "kind": str(step.kind),
         "moved": [str(limb) for limb in step.moved],
         "contacts": {limb: str(name) for limb, name in _in_order(step.contacts, LIMB_NAMES)},
         "points_mm": {limb: _point(xy) for limb, xy in _in_order(step.points_mm, LIMB_NAMES)},
         "com_mm": _point(step.com_mm),
         "joints_mm": {name: _point(xyz) for name, xyz in _in_order(step.joints_mm, JOINT_ORDER)},
-        "speed_m_s": _share(step.speed_m_s),
+        "speed_m_s": rounded_share(step.speed_m_s),
         "margin_mm": _length(step.margin_mm),
-        "load": _share(step.load),
+        "load": rounded_share(step.load),
         "load_by_limb": {
-            limb: _share(load) for limb, load in _in_order(step.load_by_limb, LIMB_NAMES)
+            limb: rounded_share(load) for limb, load in _in_order(step.load_by_limb, LIMB_NAMES)
         },
     }
 
@@ -117,7 +119,7 @@ def _why_not(why_not: WhyNot) -> dict[str, Any]:
         "limb": None if why_not.limb is None else str(why_not.limb),
         "hold": None if why_not.hold is None else str(why_not.hold),
         "missing_mm": _length(why_not.missing_mm),
-        "missing_bw": _share(why_not.missing_bw),
+        "missing_bw": rounded_share(why_not.missing_bw),
         "change": str(why_not.change),
     }
 
@@ -128,27 +130,27 @@ def _in_order(values: Mapping[str, _T], order: Sequence[str]) -> list[tuple[str,
     return [(name, values[name]) for name in (*order, *rest) if name in values]
 
 
-def _rounded(value: float | None, decimals: int) -> float | None:
+def rounded(value: float | None, decimals: int) -> float | None:
     if value is None or not math.isfinite(value):
         return None
     # Adding zero turns the negative zero that rounding can leave into a plain one.
     return round(float(value), decimals) + 0.0
 
 
-def _time(value: float | None) -> float | None:
-    return _rounded(value, TIME_DECIMALS)
+def rounded_time(value: float | None) -> float | None:
+    return rounded(value, TIME_DECIMALS)
 
 
 def _length(value: float | None) -> float | None:
-    return _rounded(value, LENGTH_DECIMALS)
+    return rounded(value, LENGTH_DECIMALS)
 
 
 def _area(value: float | None) -> float | None:
-    return _rounded(value, AREA_DECIMALS)
+    return rounded(value, AREA_DECIMALS)
 
 
-def _share(value: float | None) -> float | None:
-    return _rounded(value, SHARE_DECIMALS)
+def rounded_share(value: float | None) -> float | None:
+    return rounded(value, SHARE_DECIMALS)
 
 
 def _point(point: Iterable[float]) -> list[float | None]:
