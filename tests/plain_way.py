@@ -18,7 +18,6 @@ from scipy.optimize import minimize
 
 from climbpath.body import Athlete
 from climbpath.contacts import CONTACT_CODES, FLOOR, FREE, SMEAR
-from climbpath.motion.model import GRAVITY
 from climbpath.posture.batch import StanceBatch
 from climbpath.posture.limits import joint_limits, limb_geometry, point_limits, turned, upright
 from climbpath.posture.linkage import Linkage
@@ -26,6 +25,7 @@ from climbpath.route.arcs import MAX_DROP, MAX_RISE
 from climbpath.route.flights import FLIGHT_BIN, FLIGHT_SIDE
 from climbpath.stance.enumerate import batch_of
 from climbpath.wall import Wall
+from climbpath.wall.frames import GRAVITY
 from tests.recost import Contacts, Recoster, Stand
 
 Array = NDArray[np.float64]

@@ -29,7 +29,7 @@ from numpy.typing import NDArray
 
 from climbpath.body import Athlete
 from climbpath.contacts import CONTACT_CODES, FLOOR, FREE, LIMB_NAMES, SMEAR
-from climbpath.motion.model import GRAVITY, PacedMotion
+from climbpath.motion.model import PacedMotion
 from climbpath.posture.assembly import REST_FOOT, REST_HAND
 from climbpath.posture.linkage import linkage_of
 from climbpath.posture.newton import Postures
@@ -42,6 +42,7 @@ from climbpath.stance.stances import SAME_POINT
 from climbpath.study.climb import LATTICE_STEP
 from climbpath.study.results import Plan
 from climbpath.wall import Wall
+from climbpath.wall.frames import GRAVITY
 
 Contacts = tuple[int, int, int, int]
 Point = tuple[float, float, float]

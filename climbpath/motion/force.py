@@ -37,12 +37,13 @@ import numpy as np
 from numpy.typing import NDArray
 
 from climbpath.motion.capacity import Capacities
-from climbpath.motion.model import GRAVITY, Drive
+from climbpath.motion.model import Drive
 from climbpath.motion.strength import sample_strengths
 from climbpath.posture.linkage import Linkage
 from climbpath.stance.options import ContactOptions
 from climbpath.stance.stances import StanceSet
 from climbpath.wall import Wall
+from climbpath.wall.frames import GRAVITY
 
 Array = NDArray[np.float64]
 Flags = NDArray[np.bool_]
@@ -78,7 +79,8 @@ LEAST_SLOPE = 1e-5
 to matter, and enough to divide by."""
 
 ROUNDS = 4
-"""Rounds of Newton's method for the time of a step: it is then known to 10 µs."""
+"""Rounds of Newton's method for the time of a step. It is then known to 10 µs, but for steps that
+end near a standstill, whose end speed may be off by some mm/s."""
 
 
 def _risen(limit: Array, slope: Array, speed: float, time: Array) -> Array:

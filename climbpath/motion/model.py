@@ -17,12 +17,11 @@ from climbpath.posture.linkage import Linkage
 from climbpath.stance.options import ContactOptions
 from climbpath.stance.stances import StanceSet
 from climbpath.wall import Wall
+from climbpath.wall.frames import GRAVITY
 
 Array = NDArray[np.float64]
 Ints = NDArray[np.int64]
 Flags = NDArray[np.bool_]
-
-GRAVITY = 9.81
 
 
 @dataclass(frozen=True)

@@ -28,7 +28,6 @@ from scipy.interpolate import CubicSpline
 from climbpath.errors import NoPacingError
 from climbpath.motion.climb_pacing import pace_climb
 from climbpath.motion.force import ForceMotion
-from climbpath.motion.model import GRAVITY
 from climbpath.motion.pacing import Pacing
 from climbpath.motion.path_shape import PathShape
 from climbpath.route.flights import FLIGHT_BIN, FLIGHT_SIDE
@@ -38,6 +37,7 @@ from climbpath.study.climb import Climb
 from climbpath.study.polish_path import Crests, crests_of, needed
 from climbpath.study.polish_pieces import LAND, LEAVE, Piece, RouteReader
 from climbpath.study.track import Track, kept_points, lattice_track, path_area
+from climbpath.wall.frames import GRAVITY
 
 Array = NDArray[np.float64]
 Ints = NDArray[np.int64]

@@ -13,7 +13,7 @@ import pytest
 from climbpath.contacts import FREE, Limb
 from climbpath.motion.climb_pacing import climb_forces
 from climbpath.motion.force import ForceMotion
-from climbpath.motion.model import GRAVITY, PacedMotion
+from climbpath.motion.model import PacedMotion
 from climbpath.posture.assembly import assemble
 from climbpath.posture.com import com_of, joint_weights
 from climbpath.posture.limits import slack
@@ -29,6 +29,7 @@ from climbpath.study.polish_pieces import MOVE, RISE, RouteReader
 from climbpath.study.results import Plan
 from climbpath.study.track import lattice_track
 from climbpath.wall import Wall
+from climbpath.wall.frames import GRAVITY
 from climbpath.wall.mirror import mirror
 from tests.schemas import PLAN_SCHEMA
 from tests.study.solved import FASTEST, FORCE, PACED, STRONG, climb
